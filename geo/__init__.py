@@ -1,0 +1,1 @@
+"""Ground that can be reached: frames, terrain, wind, solvers, outlines, sections."""

@@ -1,0 +1,1 @@
+"""Aeroplane performance in a glide: atmosphere, polar, speeds, turns and the glide table."""
