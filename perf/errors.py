@@ -1,11 +1,11 @@
 """The domain errors of `perf` and `geo`; the service turns them into problem+json.
 
-    ModelError
-    |- InputError       a value is outside what the model accepts
-    |- RecordError      an aircraft record is faulty or unknown
-    |- TerrainError     terrain is missing here, or a raster is refused
-    |- LimitError       the solve would be larger than the limits allow
-    `- Cancelled        the caller asked to stop
+ModelError
+|- InputError       a value is outside what the model accepts
+|- RecordError      an aircraft record is faulty or unknown
+|- TerrainError     terrain is missing here, or a raster is refused
+|- LimitError       the solve would be larger than the limits allow
+`- Cancelled        the caller asked to stop
 """
 
 
