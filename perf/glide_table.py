@@ -126,8 +126,8 @@ def build_glide_table(
             raise InputError("A margin is out of range.", name, "0 or more")
     track: Array = np.arange(n_tracks, dtype=np.float64) * (2.0 * math.pi / n_tracks)
     tas_per_eas = 1.0 / np.sqrt(sigma(alt, isa_offset_k, qnh_pa))
-    wind = _Wind(wind_alt_m, wind_east_mps, wind_north_mps, alt)
-    air = _Air(polar, wind, track, tas_per_eas[:, None], wind_error_mps, downdraft_mps)
+    wind = _Wind(wind_alt_m, wind_east_mps, wind_north_mps, alt, track)
+    air = _Air(polar, wind, tas_per_eas[:, None], wind_error_mps, downdraft_mps)
     eas: float | Array = polar.best_glide_eas_mps
     if speed_policy == "wind":
         eas = _best_speed(air, polar, maximum_speed_eas_mps)
@@ -138,7 +138,9 @@ def build_glide_table(
 class _Wind:
     """The wind at the table's levels, and its change in the intervals between them."""
 
-    def __init__(self, alt_m: ArrayLike, east: ArrayLike, north: ArrayLike, levels: Array) -> None:
+    def __init__(
+        self, alt_m: ArrayLike, east: ArrayLike, north: ArrayLike, levels: Array, track: Array
+    ) -> None:
         source = _levels("wind_alt_m", alt_m, least=0)
         east_mps, north_mps = np.asarray(east, np.float64), np.asarray(north, np.float64)
         if not source.shape == east_mps.shape == north_mps.shape:
@@ -152,29 +154,33 @@ class _Wind:
         # Wind levels inside the table's intervals count too: a thin layer is not stepped over.
         inside = source[(source > levels[0]) & (source < levels[-1])]
         merged = np.union1d(levels, inside)
-        self.start = np.searchsorted(merged, levels[:-1])
-        self.interval = np.repeat(
-            np.arange(levels.size - 1), np.diff(np.append(self.start, merged.size - 1))
-        )
-        self.rise_east = np.diff(np.interp(merged, source, east_mps))[:, None]
-        self.rise_north = np.diff(np.interp(merged, source, north_mps))[:, None]
         self.thickness = np.diff(levels)[:, None]
-        self.sheared = bool(np.any(self.rise_east != 0.0) or np.any(self.rise_north != 0.0))
+        self.first = np.searchsorted(merged, levels[:-1])  # first piece of each interval
+        self.interval = np.searchsorted(levels, merged[:-1], side="right") - 1
+        self.extra = np.setdiff1d(np.arange(merged.size - 1), self.first)
+        rise_east = np.diff(np.interp(merged, source, east_mps))[:, None]
+        rise_north = np.diff(np.interp(merged, source, north_mps))[:, None]
+        self.sheared = bool(np.any(rise_east != 0.0) or np.any(rise_north != 0.0))
+        self.along, self.across = _turned(track, self.east[:, None], self.north[:, None])
+        self.rise_along, self.rise_across = _turned(track, rise_east, rise_north)
 
-    def headwind_slope(self, heading_east: Array, heading_north: Array) -> Array:
+    def headwind_slope(self, level: Array, root: Array) -> Array:
         """Return the rise of headwind with height that is charged at each level [1/s].
 
         Rises only: what a falling headwind gives back is not credited, not even within one
-        interval. A level takes the larger of the intervals above and below it.
+        interval. A level takes the larger of the intervals above and below it. The heading of
+        an interval is that of its lower level.
         """
         at = self.interval
-        rise = -(self.rise_east * heading_east[at] + self.rise_north * heading_north[at])
-        rise = np.maximum(rise, 0.0)
-        if rise.shape[0] != self.start.size:
-            rise = np.add.reduceat(rise, self.start, axis=0)
-        slope = rise / self.thickness
+        rise = self.across[at] * self.rise_across - root[at] * self.rise_along
+        rise /= level[at] if level.shape[0] > 1 else level
+        np.maximum(rise, 0.0, out=rise)
+        slope = rise[self.first]
+        for piece in self.extra:
+            slope[at[piece]] += rise[piece]
+        slope /= self.thickness
         charged: Array = np.concatenate((slope, slope[-1:]))
-        np.fmax(charged[1:-1], slope[:-1], out=charged[1:-1])
+        np.maximum(charged[1:-1], slope[:-1], out=charged[1:-1])
         return charged
 
 
@@ -185,17 +191,12 @@ class _Air:
         self,
         polar: Polar,
         wind: _Wind,
-        track: Array,
         tas_per_eas: Array,
         wind_error_mps: float,
         downdraft_mps: float,
     ) -> None:
         self.polar, self.wind, self.tas_per_eas = polar, wind, tas_per_eas
         self.wind_error_mps, self.downdraft_mps = wind_error_mps, downdraft_mps
-        self.sin_track, self.cos_track = np.sin(track), np.cos(track)
-        east, north = wind.east[:, None], wind.north[:, None]
-        self.along = east * self.sin_track + north * self.cos_track
-        self.across = east * self.cos_track - north * self.sin_track  # positive to the right
 
     def horizontal_speed(self, eas: float | Array) -> tuple[Array, Array]:
         """Return V cos(gamma) and V sin(gamma) [m/s], shaped to the table."""
@@ -206,9 +207,9 @@ class _Air:
     def loss(self, eas: float | Array) -> Array:
         """Return the loss [m/m] at this speed [m/s EAS], a scalar or one for each entry."""
         level, sink = self.horizontal_speed(eas)
-        room = level**2 - self.across**2
+        room = level**2 - self.wind.across**2
         root = np.sqrt(np.maximum(room, 0.0))
-        ground = self.along + root - self.wind_error_mps
+        ground = self.wind.along + root - self.wind_error_mps
         held = (room > 0.0) & (ground > SLOWEST_MPS)
         share = self.shear_room(eas, level, root)
         held &= share > LEAST_SHEAR_ROOM
@@ -223,9 +224,7 @@ class _Air:
         """
         if not self.wind.sheared:
             return 1.0
-        east = (root * self.sin_track - self.across * self.cos_track) / level
-        north = (root * self.cos_track + self.across * self.sin_track) / level
-        slope = self.wind.headwind_slope(east, north)
+        slope = self.wind.headwind_slope(level, root)
         return 1.0 - eas * self.tas_per_eas / GRAVITY_MPS2 * slope
 
 
@@ -240,7 +239,7 @@ def _best_speed(air: _Air, polar: Polar, maximum_eas_mps: float) -> Array:
     low = min(SLOWEST_STALL_FACTOR * polar.stall_eas_mps, maximum_eas_mps)
     low = max(low, 0.3 * min(polar.best_glide_eas_mps, maximum_eas_mps))
     speeds = np.linspace(low, maximum_eas_mps, N_SPEEDS)
-    best = np.full(air.along.shape, speeds[0])
+    best = np.full(air.wind.along.shape, speeds[0])
     least = air.loss(float(speeds[0]))
     for speed in speeds[1:]:
         loss = air.loss(float(speed))
@@ -273,7 +272,7 @@ def _table(air: _Air, alt: Array, track: Array, eas: float | Array, loss: Array)
     """Return the table for the speeds chosen."""
     held = np.isfinite(loss)
     level, _ = air.horizontal_speed(eas)
-    crab = np.arcsin(np.clip(air.across / level, -1.0, 1.0))
+    crab = np.arcsin(np.clip(air.wind.across / level, -1.0, 1.0))
     gamma = float(glide_angle_rad(air.polar, air.polar.best_glide_eas_mps))
     tas = air.polar.best_glide_eas_mps * air.tas_per_eas[:, 0]
     lost = alt[~held.all(axis=1)]
@@ -291,6 +290,12 @@ def _table(air: _Air, alt: Array, track: Array, eas: float | Array, loss: Array)
         wind_north_mps=air.wind.north,
         holdable_below_m=float(lost[0]) if lost.size else math.inf,
     )
+
+
+def _turned(track: Array, east: Array, north: Array) -> tuple[Array, Array]:
+    """Return components along each track and to its right, the tracks as columns."""
+    sine, cosine = np.sin(track), np.cos(track)
+    return east * sine + north * cosine, east * cosine - north * sine
 
 
 def _levels(name: str, values: ArrayLike, least: int = 1) -> Array:

@@ -167,7 +167,7 @@ def _check_states(form: RecordForm) -> None:
         for j, configuration in enumerate(form.configurations):
             field = _blame(i, propeller, j, configuration)
             polar = form.polar(form.mass_max_kg, propeller.name, configuration.name)
-            if not Figures.RATIO[0] <= round(polar.ratio, 9) <= Figures.RATIO[1]:
+            if not Figures.RATIO[0] <= polar.ratio <= Figures.RATIO[1]:
                 raise RecordError(
                     "The glide ratio of this state is out of range.", field, "3 to 70"
                 )

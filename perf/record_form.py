@@ -110,7 +110,8 @@ class RecordForm:
         if self.drag is not None:
             return Polar.from_drag(parasite, induced, self.drag[2], stall, mass_kg)
         speed = (induced / parasite) ** 0.25 * math.sqrt(mass_kg / self.glide_mass_kg)
-        return Polar(speed, 1.0 / math.sqrt(parasite * induced), stall, mass_kg)
+        ratio = round(1.0 / math.sqrt(parasite * induced), 9)  # 9, not 9.000000000000002
+        return Polar(speed, ratio, stall, mass_kg)
 
     def _drag_of(self, figures: Figures | None) -> tuple[float, float]:
         """Return parasite and induced drag: CD0 and K, or 1 / (E v^2) and v^2 / E of a pair."""
