@@ -1,0 +1,233 @@
+"""Kernels of the terrain: the highest point of a bilinear surface in every cell.
+
+Coordinates in a source are those of its posts: post (j, i) lies at v = j, u = i, and the patch
+(j, i) reaches from there to post (j + 1, i + 1). A patch with a void (NaN) post is void.
+
+A bilinear patch is a saddle and has no maximum inside. So the highest point of a cell is a post
+in it, or lies on its edges: at an end, where the edge meets a line of posts, or at the vertex of
+the parabola that the surface is along the edge between two such points.
+"""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from numba import njit
+
+NO_TOP = -np.inf  # no valid point of the surface has been found in the cell
+TOUCH_M = 0.05  # posts this close to a cell count as in it: covers the mapping's interpolation
+
+
+@njit(nogil=True, cache=True)
+def segment_top(posts, u0, v0, u1, v1, i, j, ta, tb):
+    """Return the highest value on part of a segment within one patch, NaN where it is void.
+
+    The segment runs from (u0, v0) at t = 0 to (u1, v1) at t = 1; the part is ta .. tb, t in 0 .. 1.
+    """
+    n_rows, n_cols = posts.shape
+    if i == n_cols - 1 and max(u0, u1) <= i:
+        i -= 1
+    if j == n_rows - 1 and max(v0, v1) <= j:
+        j -= 1
+    if i < 0 or j < 0 or i >= n_cols - 1 or j >= n_rows - 1:
+        return math.nan
+    corner = float(posts[j, i])
+    east = float(posts[j, i + 1]) - corner
+    north = float(posts[j + 1, i]) - corner
+    twist = float(posts[j + 1, i + 1]) - corner - east - north
+    if math.isnan(twist):
+        return math.nan
+    du, dv, start_u, start_v = u1 - u0, v1 - v0, u0 - i, v0 - j
+    # f(t) = base + slope t + bend t^2
+    base = corner + east * start_u + north * start_v + twist * start_u * start_v
+    slope = east * du + north * dv + twist * (start_u * dv + start_v * du)
+    bend = twist * du * dv
+    top = base + max(ta * (slope + bend * ta), tb * (slope + bend * tb))
+    if bend < 0.0:
+        vertex = -slope / (2.0 * bend)
+        if ta < vertex < tb:
+            top = max(top, base + vertex * (slope + bend * vertex))
+    return top
+
+
+@njit(nogil=True, cache=True)
+def edge_top(posts, u0, v0, u1, v1):
+    """Return (highest valid value, 1 if any of it is void else 0) along a straight edge."""
+    if not (math.isfinite(u0) and math.isfinite(u1) and math.isfinite(v0) and math.isfinite(v1)):
+        return NO_TOP, 1
+    du, dv = u1 - u0, v1 - v0
+    step_u = 1.0 / abs(du) if du != 0.0 else math.inf
+    step_v = 1.0 / abs(dv) if dv != 0.0 else math.inf
+    next_u = next_v = math.inf
+    if du != 0.0:
+        next_u = (math.floor(u0) + 1.0 - u0 if du > 0.0 else u0 - math.ceil(u0) + 1.0) * step_u
+    if dv != 0.0:
+        next_v = (math.floor(v0) + 1.0 - v0 if dv > 0.0 else v0 - math.ceil(v0) + 1.0) * step_v
+    top, void, ta = NO_TOP, 0, 0.0
+    while True:
+        tb = min(next_u, next_v, 1.0)
+        middle = 0.5 * (ta + tb)
+        i, j = math.floor(u0 + middle * du), math.floor(v0 + middle * dv)
+        value = segment_top(posts, u0, v0, u1, v1, i, j, ta, tb)
+        if math.isnan(value):
+            void = 1
+        else:
+            top = max(top, value)
+        if tb >= 1.0:
+            return top, void
+        if next_u <= tb:
+            next_u += step_u
+        if next_v <= tb:
+            next_v += step_v
+        ta = tb
+
+
+@njit(nogil=True, cache=True)
+def fill_row(lattice, row, step, out):
+    """Write a row of vertices, interpolated from a lattice with a point every `step` vertices."""
+    upper = min(row // step, lattice.shape[0] - 2)
+    share = (row - upper * step) / step
+    for k in range(lattice.shape[1] - 1):
+        left = lattice[upper, k] + share * (lattice[upper + 1, k] - lattice[upper, k])
+        right = lattice[upper, k + 1] + share * (lattice[upper + 1, k + 1] - lattice[upper, k + 1])
+        for m in range(step):
+            out[k * step + m] = left + (right - left) * m / step
+        out[(k + 1) * step] = right
+
+
+@njit(nogil=True, cache=True)
+def raise_to(top, void, row, col, value, missing):
+    """Take an edge's or a post's value into the cell, if the cell is one of the grid."""
+    if 0 <= row < top.shape[0] and 0 <= col < top.shape[1]:
+        top[row, col] = max(top[row, col], value)
+        void[row, col] |= missing
+
+
+@njit(nogil=True, cache=True)
+def walk_edges(posts, lattice_u, lattice_v, step, top, void):
+    """Raise every cell to the highest point along its edges; mark those that touch a void.
+
+    Parameters
+    ----------
+    posts
+        Heights [m], shape ``(n, m)``, NaN where void.
+    lattice_u, lattice_v
+        Post coordinates of every `step`-th cell corner, shape ``(rows/step + 1, cols/step + 1)``.
+    top, void
+        Float64 and uint8, shape ``(rows, cols)``, changed in place.
+    """
+    n_rows, n_cols = top.shape
+    u_row, v_row = np.empty(n_cols + 1), np.empty(n_cols + 1)
+    u_next, v_next = np.empty(n_cols + 1), np.empty(n_cols + 1)
+    fill_row(lattice_u, 0, step, u_row)
+    fill_row(lattice_v, 0, step, v_row)
+    for row in range(n_rows + 1):
+        for col in range(n_cols):
+            value, missing = edge_top(posts, u_row[col], v_row[col], u_row[col + 1], v_row[col + 1])
+            raise_to(top, void, row, col, value, missing)
+            raise_to(top, void, row - 1, col, value, missing)
+        if row == n_rows:
+            break
+        fill_row(lattice_u, row + 1, step, u_next)
+        fill_row(lattice_v, row + 1, step, v_next)
+        for col in range(n_cols + 1):
+            value, missing = edge_top(posts, u_row[col], v_row[col], u_next[col], v_next[col])
+            raise_to(top, void, row, col, value, missing)
+            raise_to(top, void, row, col - 1, value, missing)
+        u_row, u_next = u_next, u_row
+        v_row, v_next = v_next, v_row
+
+
+@njit(nogil=True, cache=True)
+def scatter_posts(posts, lattice_x, lattice_y, step, touch, top, void):
+    """Raise every cell to the posts in it; mark the cells that hold a void post.
+
+    Parameters
+    ----------
+    posts
+        Heights [m], shape ``(n, m)``, NaN where void.
+    lattice_x, lattice_y
+        Cell coordinates (column, row) of every `step`-th post, covering all of `posts`.
+    touch
+        Posts outside a cell by no more than this [cells] count as in it.
+    top, void
+        Float64 and uint8, shape ``(rows, cols)``, changed in place.
+    """
+    n_rows, n_cols = posts.shape
+    xs = np.empty((lattice_x.shape[1] - 1) * step + 1)
+    ys = np.empty(xs.size)
+    for j in range(n_rows):
+        fill_row(lattice_x, j, step, xs)
+        fill_row(lattice_y, j, step, ys)
+        for i in range(n_cols):
+            x, y = xs[i], ys[i]
+            if not (-1.0 < x < top.shape[1] + 1.0 and -1.0 < y < top.shape[0] + 1.0):
+                continue
+            value, missing = float(posts[j, i]), 0
+            if math.isnan(value):
+                value, missing = NO_TOP, 1
+            for row in range(math.floor(y - touch), math.floor(y + touch) + 1):
+                for col in range(math.floor(x - touch), math.floor(x + touch) + 1):
+                    raise_to(top, void, row, col, value, missing)
+
+
+@njit(nogil=True, cache=True)
+def merge(top, void, out, done):
+    """Take a coarser source's cells into those that finer ones did not cover whole.
+
+    Parameters
+    ----------
+    top, void
+        Of the source, as the other kernels leave them.
+    out, done
+        Highest point so far (float64) and 1 where a source has covered the whole cell (uint8).
+
+    Returns
+    -------
+    Number of cells that took something from this source.
+    """
+    taken = 0
+    for row in range(out.shape[0]):
+        for col in range(out.shape[1]):
+            if done[row, col] == 0 and top[row, col] > NO_TOP:
+                taken += 1
+                out[row, col] = max(out[row, col], top[row, col])
+                if void[row, col] == 0:
+                    done[row, col] = 1
+    return taken
+
+
+@njit(nogil=True, cache=True)
+def sample(posts, u, v, out):
+    """Write the bilinear height at each point whose `out` is NaN, where the patch is not void.
+
+    Parameters
+    ----------
+    posts
+        Heights [m], shape ``(n, m)``.
+    u, v
+        Post coordinates, shape ``(k,)``.
+    out
+        Heights [m], shape ``(k,)``, changed in place.
+    """
+    n_rows, n_cols = posts.shape
+    for k in range(u.size):
+        if not (math.isnan(out[k]) and 0.0 <= u[k] <= n_cols - 1 and 0.0 <= v[k] <= n_rows - 1):
+            continue
+        i, j = min(math.floor(u[k]), n_cols - 2), min(math.floor(v[k]), n_rows - 2)
+        s, t = u[k] - i, v[k] - j
+        south = float(posts[j, i]) * (1.0 - s) + float(posts[j, i + 1]) * s
+        north = float(posts[j + 1, i]) * (1.0 - s) + float(posts[j + 1, i + 1]) * s
+        out[k] = south * (1.0 - t) + north * t
+
+
+def warm_up_terrain() -> None:
+    """Compile every kernel of this file (or load it from the cache) on a tiny input."""
+    posts = np.zeros((3, 3), dtype=np.float32)
+    lattice = np.zeros((2, 2))
+    top, void = np.full((2, 2), NO_TOP), np.zeros((2, 2), dtype=np.uint8)
+    walk_edges(posts, lattice, lattice, 2, top, void)
+    scatter_posts(posts, lattice, lattice, 2, 0.01, top, void)
+    merge(top, void, np.full((2, 2), NO_TOP), np.zeros((2, 2), dtype=np.uint8))
+    sample(posts, np.zeros(1), np.zeros(1), np.full(1, np.nan))
