@@ -7,6 +7,7 @@ from typing import Annotated, Any, Literal
 from pydantic import AfterValidator, BaseModel, ConfigDict, Field, WithJsonSchema
 from pydantic_core import PydanticCustomError
 
+from service.record_schema import RECORD
 from service.settings import (
     ALTITUDE_MAX_FT,
     ALTITUDE_MIN_FT,
@@ -54,7 +55,7 @@ Aircraft = Annotated[
         {
             "anyOf": [
                 {"type": "string", "minLength": 1, "maxLength": 64},
-                {"type": "object", "description": "The same keys as an aircraft record's file."},
+                RECORD,
             ],
             "description": "The id of a record in the catalog, or a whole record.",
         }

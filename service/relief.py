@@ -1,0 +1,271 @@
+"""Shaded relief of the terrain as web-mercator tiles: the only base map there is offline."""
+
+from __future__ import annotations
+
+import hashlib
+import io
+import threading
+from collections import OrderedDict
+from dataclasses import dataclass
+from functools import lru_cache
+from math import atan, cos, degrees, pi, sinh
+
+import numpy as np
+from numpy.typing import NDArray
+from PIL import Image
+
+from geo.terrain import TerrainStore
+
+Array = NDArray[np.float64]
+
+TILE_PX = 256
+MARGIN = 1  # samples beyond the edge that the cubic needs; one more follows on the far side
+INTERVALS_MAX = 252  # 252 + 3 samples a side: 65 025 in all
+INTERVALS_MIN = 4
+EQUATOR_M = 2.0 * pi * 6378137.0  # circumference of the sphere that web mercator uses [m]
+
+SUN_AZIMUTH_RAD = 315.0 * pi / 180.0  # north-west, where readers expect the light
+SUN_ALTITUDE_RAD = 45.0 * pi / 180.0
+SHADE_STRENGTH = 0.62
+SEA_LOW_M, SEA_HIGH_M = -0.5, 0.25  # flat ground between these is drawn as sea
+SEA_SLOPE = 0.004
+SEA_RGB = (196.0, 207.0, 216.0)
+VOID_RGB = (206.0, 204.0, 200.0)
+HATCH_RGB = (150.0, 148.0, 146.0)
+HATCH = np.add.outer(np.arange(TILE_PX), np.arange(TILE_PX)) % 8 < 2  # runs on from tile to tile
+
+# Land like paper: pale at the shore, warm grey-buff higher up, nearly white on the tops.
+TINT_M = np.array([0.0, 150.0, 500.0, 1000.0, 1800.0, 3000.0, 5000.0])
+TINT_RGB = np.array(
+    [
+        [233.0, 230.0, 219.0],
+        [230.0, 226.0, 212.0],
+        [222.0, 216.0, 200.0],
+        [214.0, 207.0, 192.0],
+        [208.0, 203.0, 194.0],
+        [224.0, 222.0, 219.0],
+        [246.0, 246.0, 247.0],
+    ]
+)
+
+
+@dataclass(frozen=True)
+class Tile:
+    """A finished tile: PNG and its entity tag."""
+
+    png: bytes
+    etag: str
+
+
+def tile_count(z: int) -> int:
+    """Return the number of tiles along each side of the world at zoom `z`."""
+    return 1 << z
+
+
+def tile_longitude_deg(x: Array | float, z: int) -> Array:
+    """Return the longitude [deg] of a tile coordinate, whole numbers being tile edges."""
+    return np.asarray(x) / tile_count(z) * 360.0 - 180.0
+
+
+def tile_latitude_deg(y: float, z: int) -> float:
+    """Return the latitude [deg] of a tile coordinate, counted from the north.
+
+    Source
+    ------
+    OGC 17-083r2, Two Dimensional Tile Matrix Set, annex D.1 (WebMercatorQuad); Snyder, USGS
+    Professional Paper 1395 (1987), p. 44, eq. 7-4.
+    """
+    return degrees(atan(sinh(pi * (1.0 - 2.0 * y / tile_count(z)))))
+
+
+def intervals_for(tile_m: float, cell_m: float) -> int:
+    """Return the number of sample intervals along a tile: no finer than the posts or the pixels.
+
+    A power of two (or the greatest), so that neighbouring tiles share their edge samples.
+    """
+    wanted = tile_m / max(cell_m, 0.1)
+    intervals = INTERVALS_MIN
+    while intervals < wanted and intervals < 128:
+        intervals *= 2
+    return INTERVALS_MAX if wanted > 128 else intervals
+
+
+@lru_cache(maxsize=16)
+def cubic(intervals: int) -> tuple[Array, Array]:
+    """Return Catmull-Rom weights and their slopes at pixel centres.
+
+    Both have shape ``(256, intervals + 3)``; slopes are per sample interval. The curve passes
+    through the samples and its slope is continuous, so the posts leave no facets.
+    """
+    at = (np.arange(TILE_PX) + 0.5) / TILE_PX * intervals
+    first = np.minimum(at.astype(np.int64), intervals - 1)
+    t = at - first
+    value = 0.5 * np.stack([
+        -t + 2 * t**2 - t**3, 2 - 5 * t**2 + 3 * t**3, t + 4 * t**2 - 3 * t**3, -(t**2) + t**3,
+    ])  # fmt: skip
+    slope = 0.5 * np.stack([
+        -1 + 4 * t - 3 * t**2, -10 * t + 9 * t**2, 1 + 8 * t - 9 * t**2, -2 * t + 3 * t**2,
+    ])  # fmt: skip
+    weights, slopes = np.zeros((2, TILE_PX, intervals + 3))
+    rows = np.arange(TILE_PX)
+    for k in range(4):
+        weights[rows, first + k] = value[k]
+        slopes[rows, first + k] = slope[k]
+    return weights, slopes
+
+
+def fill_voids(ground_m: Array) -> Array:
+    """Return the samples with each NaN replaced by a neighbour along its row, then its column."""
+    filled = ground_m.copy()
+    for _ in range(2):
+        for view in (filled, filled[:, ::-1]):
+            known = ~np.isnan(view)
+            last = np.maximum.accumulate(np.where(known, np.arange(view.shape[1]), 0), axis=1)
+            view[:] = np.take_along_axis(view, last, axis=1)
+        filled = filled.T
+    return filled
+
+
+def shade(east_slope: Array, north_slope: Array) -> Array:
+    """Return brightness [about 0.4 .. 1.2] of slopes [m/m]; flat ground is 1.
+
+    Source
+    ------
+    Horn, Hill shading and the reflectance map, Proc. IEEE 69(1) (1981), Lambertian form.
+    """
+    light_east = np.sin(SUN_AZIMUTH_RAD) * np.cos(SUN_ALTITUDE_RAD)
+    light_north = np.cos(SUN_AZIMUTH_RAD) * np.cos(SUN_ALTITUDE_RAD)
+    up = np.sin(SUN_ALTITUDE_RAD)
+    lit = up - east_slope * light_east - north_slope * light_north
+    lit = np.maximum(lit / np.sqrt(1.0 + east_slope**2 + north_slope**2), 0.0)
+    return np.asarray(1.0 + SHADE_STRENGTH * (lit - up))
+
+
+def colour(ground_m: Array, east_slope: Array, north_slope: Array, exaggeration: float) -> Array:
+    """Return RGB [0 .. 255], shape ``(256, 256, 3)``, of a tile's ground."""
+    tint = np.stack([np.interp(ground_m, TINT_M, TINT_RGB[:, c]) for c in range(3)], axis=-1)
+    tint *= shade(east_slope * exaggeration, north_slope * exaggeration)[..., None]
+    flat = np.hypot(east_slope, north_slope) < SEA_SLOPE
+    sea = flat & (ground_m > SEA_LOW_M) & (ground_m < SEA_HIGH_M)
+    tint[sea] = SEA_RGB
+    return np.clip(tint, 0.0, 255.0)
+
+
+def _box(bbox: tuple[float, float, float, float]) -> tuple[float, float, float, float]:
+    """Return west, south, east, north [deg] with east beyond west, also across the date line."""
+    west, south, east, north = bbox
+    return west, south, east + 360.0 if east < west else east, north
+
+
+class Relief:
+    """Draws relief tiles from a terrain store and keeps the last ones.
+
+    Parameters
+    ----------
+    store
+        The terrain.
+    cache_bytes
+        Finished tiles kept [byte].
+    """
+
+    def __init__(self, store: TerrainStore, cache_bytes: int) -> None:
+        self._store = store
+        self._cache_bytes = cache_bytes
+        self._kept: OrderedDict[tuple[int, int, int], Tile | None] = OrderedDict()
+        self._size = 0
+        self._lock = threading.Lock()
+
+    def tile(self, z: int, x: int, y: int) -> Tile | None:
+        """Return a tile, or None off the terrain. Safe to call from several threads."""
+        key = (z, x, y)
+        with self._lock:
+            if key in self._kept:
+                self._kept.move_to_end(key)
+                return self._kept[key]
+        tile = self._draw(z, x, y)
+        with self._lock:
+            if key not in self._kept:
+                self._kept[key] = tile
+                self._size += self._weight(tile)
+            while self._size > self._cache_bytes and self._kept:
+                self._size -= self._weight(self._kept.popitem(last=False)[1])
+        return tile
+
+    def cached(self, z: int, x: int, y: int) -> Tile | None:
+        """Return a tile that is at hand, without drawing."""
+        with self._lock:
+            return self._kept.get((z, x, y))
+
+    @staticmethod
+    def _weight(tile: Tile | None) -> int:
+        return 512 + (len(tile.png) if tile else 0)
+
+    def _draw(self, z: int, x: int, y: int) -> Tile | None:
+        west, east = float(tile_longitude_deg(x, z)), float(tile_longitude_deg(x + 1, z))
+        north, south = tile_latitude_deg(y, z), tile_latitude_deg(y + 1, z)
+        cells_m = self._cells_m(west, south, east, north)
+        if not cells_m:
+            return None
+        tile_m = EQUATOR_M / tile_count(z) * cos((north + south) * pi / 360.0)
+        intervals = intervals_for(tile_m, min(cells_m))
+        ground_m = self._sample(z, x, y, intervals)
+        if np.isnan(ground_m).all():
+            return None
+        png = self._png(ground_m, self._within(z, x, y), tile_m)
+        return Tile(png, f'"{hashlib.sha256(png).hexdigest()[:24]}"')
+
+    def _cells_m(self, west: float, south: float, east: float, north: float) -> list[float]:
+        """Return the post spacings [m] of the sources whose box meets this one [deg]."""
+        found = []
+        for source in self._store.sources:
+            left, bottom, right, top = _box(source.bbox)
+            for shift in (-360.0, 0.0, 360.0):
+                apart = left + shift > east or right + shift < west
+                if not apart and bottom <= north and top >= south:
+                    found.append(source.cell_m)
+                    break
+        return found
+
+    def _within(self, z: int, x: int, y: int) -> NDArray[np.bool_]:
+        """Return the pixels within the box of a source: unknown ground there is a void."""
+        middles = (np.arange(TILE_PX) + 0.5) / TILE_PX
+        lon = tile_longitude_deg(x + middles, z)
+        lat = np.array([tile_latitude_deg(y + middle, z) for middle in middles])
+        within = np.zeros((TILE_PX, TILE_PX), dtype=np.bool_)
+        for source in self._store.sources:
+            west, south, east, north = _box(source.bbox)
+            columns = (lon - west) % 360.0 <= east - west
+            rows = (lat >= south) & (lat <= north)
+            within |= rows[:, None] & columns
+        return within
+
+    def _sample(self, z: int, x: int, y: int, intervals: int) -> Array:
+        """Return ground [m] at the sample points, row 0 in the north, NaN off the terrain."""
+        steps = (np.arange(intervals + 3) - MARGIN) / intervals
+        lon = tile_longitude_deg(x + steps, z)
+        lat = np.array([tile_latitude_deg(y + step, z) for step in steps])
+        lons, lats = np.meshgrid((lon + 180.0) % 360.0 - 180.0, np.clip(lat, -85.06, 85.06))
+        ground = self._store.ground_m(lons.ravel(), lats.ravel())
+        return np.asarray(ground, dtype=np.float64).reshape(lons.shape)
+
+    def _png(self, ground_m: Array, within: NDArray[np.bool_], tile_m: float) -> bytes:
+        intervals = ground_m.shape[1] - 3
+        weights, slopes = cubic(intervals)
+        known = weights @ (~np.isnan(ground_m)).astype(np.float64) @ weights.T
+        filled = fill_voids(ground_m)
+        smooth_m = weights @ filled @ weights.T
+        step_m = tile_m / intervals
+        east_slope = weights @ filled @ slopes.T / step_m
+        north_slope = -(slopes @ filled @ weights.T) / step_m
+        pixel_m = tile_m / TILE_PX
+        exaggeration = 1.6 + 0.9 * np.clip(np.log2(pixel_m / 30.0) / 3.0, 0.0, 1.5)
+        rgb = colour(smooth_m, east_slope, north_slope, float(exaggeration))
+        void = known < 0.5
+        rgb[void] = VOID_RGB
+        rgb[void & HATCH] = HATCH_RGB
+        alpha = np.where(void & ~within, 0.0, 255.0)
+        rgba = np.dstack([rgb, alpha])
+        image = Image.fromarray(rgba.astype(np.uint8), "RGBA")
+        out = io.BytesIO()
+        image.save(out, "PNG", compress_level=5)
+        return out.getvalue()
