@@ -1,0 +1,1 @@
+"""The parts of `make_demo.py`: noise, erosion, layout, and the writers."""
