@@ -20,9 +20,9 @@ from shapely.geometry import LineString, MultiPolygon, Point, Polygon, mapping
 from shapely.geometry.base import BaseGeometry
 from shapely.geometry.polygon import orient
 
+from geo.case import FT_M
 from perf.errors import InputError
 
-FOOT_M = 0.3048  # international foot [m], exact
 KINDS = ("aerodrome", "strip", "field", "water")
 STATUSES = ("open", "private", "disused", "surveyed", "candidate")
 MAX_FILE_BYTES = 8_000_000
@@ -110,7 +110,7 @@ def _number(low: float, high: float) -> Callable[[str, Any], float]:
 def _feet(low: float, high: float) -> Callable[[str, Any], float]:
     """Return a reader of feet within [low, high] that gives metres."""
     read = _number(low, high)
-    return lambda member, value: read(member, value) * FOOT_M
+    return lambda member, value: read(member, value) * FT_M
 
 
 def _text(member: str, value: Any) -> str:
@@ -369,7 +369,7 @@ def _schema_value(name: str, value: Any) -> Any:
     """Return a field's value in the schema's unit, free of the noise of conversion."""
     if not name.endswith("_ft") or value is None:
         return value
-    feet = round(value / FOOT_M, 6)
+    feet = round(value / FT_M, 6)
     return int(feet) if feet.is_integer() else feet
 
 
