@@ -6,7 +6,9 @@ from collections.abc import Sequence
 from functools import cache
 from typing import Any
 
-from service.schemas import SectionRequest
+from pydantic import BaseModel
+
+from service.schemas import FootprintRequest
 
 PATH_FIELDS = {
     "z": "a whole number, 0 to 17",
@@ -16,32 +18,29 @@ PATH_FIELDS = {
 
 
 @cache
-def _schema() -> dict[str, Any]:
-    return SectionRequest.model_json_schema()
+def _schema(model: type[BaseModel]) -> dict[str, Any]:
+    return model.model_json_schema()
 
 
-def _open(node: dict[str, Any]) -> dict[str, Any]:
+def _open(node: dict[str, Any], definitions: dict[str, Any]) -> dict[str, Any]:
     """Follow a reference and step over `null` alternatives."""
     while True:
         if "$ref" in node:
-            node = _schema()["$defs"][node["$ref"].rsplit("/", 1)[-1]]
+            node = definitions[node["$ref"].rsplit("/", 1)[-1]]
         elif "anyOf" in node and any(part.get("type") == "null" for part in node["anyOf"]):
             node = next(part for part in node["anyOf"] if part.get("type") != "null")
         else:
             return node
 
 
-def _child(node: dict[str, Any], part: str | int) -> dict[str, Any] | None:
+def _child(node: dict[str, Any], part: str | int) -> Any:
     """Return the schema of one member or entry, or None."""
-    found: Any = None
     if isinstance(part, str):
-        found = node.get("properties", {}).get(part)
-    elif "prefixItems" in node:
+        return node.get("properties", {}).get(part)
+    if "prefixItems" in node:
         items = node["prefixItems"]
-        found = items[part] if part < len(items) else None
-    else:
-        found = node.get("items")
-    return _open(found) if isinstance(found, dict) else None
+        return items[part] if part < len(items) else None
+    return node.get("items")
 
 
 def _number(value: float) -> str:
@@ -67,7 +66,7 @@ def _words(node: dict[str, Any]) -> str | None:
     return None
 
 
-def allowed_at(parts: Sequence[str | int]) -> str | None:
+def allowed_at(parts: Sequence[str | int], model: type[BaseModel] = FootprintRequest) -> str | None:
     """Return what is allowed at a field, e.g. ``0 to 250``.
 
     Parameters
@@ -75,13 +74,17 @@ def allowed_at(parts: Sequence[str | int]) -> str | None:
     parts
         Names and indices from the top of the request to the field. For an unknown field the
         answer lists the fields that its object has.
+    model
+        The request's schema.
     """
     if len(parts) == 2 and parts[0] == "path":
         return PATH_FIELDS.get(str(parts[1]))
-    node = _open(_schema())
+    schema = _schema(model)
+    definitions = schema.get("$defs", {})
+    node = _open(schema, definitions)
     for part in parts:
         child = _child(node, part)
-        if child is None:
+        if not isinstance(child, dict):
             break
-        node = child
+        node = _open(child, definitions)
     return _words(node)

@@ -7,6 +7,7 @@ import logging
 from collections.abc import AsyncIterator
 from contextlib import asynccontextmanager
 from dataclasses import replace
+from typing import Any
 
 from fastapi import FastAPI
 from starlette.middleware import Middleware
@@ -14,7 +15,7 @@ from starlette.staticfiles import StaticFiles
 
 import geo.footprint
 from perf.errors import ModelError
-from service import openapi, problems, routes
+from service import convert, openapi, problems, routes
 from service.admission import Admission
 from service.body_guard import BodyGuard
 from service.middleware import HeadAsGet, SecurityHeaders
@@ -46,6 +47,8 @@ def create_app(settings: Settings | None = None, solver: Solver | None = None) -
     check_static(settings)
     library = library_folder()
     world = load_world(settings)
+    for refused in world.store.refused:
+        logger.warning("A terrain file is refused: %s", refused.detail)
     if solver is not None:
         world = replace(world, solver=solver)
     app = FastAPI(
@@ -88,14 +91,14 @@ async def _lifespan(app: FastAPI) -> AsyncIterator[None]:
     app.state.tiles.stop()
 
 
-def warm_up(world: World, start: dict[str, object]) -> None:
+def warm_up(world: World, start: dict[str, Any]) -> None:
     """Compile the solver and solve the start case, so that the first request is quick."""
     logger.info("Compiling the solver. The first start on a machine takes a minute or two.")
-    geo.footprint.warm_up()
-    logger.info("Solving the start case.")
-    for detail in ("fine", "coarse"):
-        request = FootprintRequest.model_validate({**start, "detail": detail})
+    for detail in ("coarse", "fine"):
+        request = FootprintRequest.model_validate({**start, "track_deg": 90, "detail": detail})
         try:
-            world.solve(request)
+            record = convert.record_of(request.aircraft, world.records)
+            geo.footprint.warm_up(world.store, convert.case_of(request, record))
         except ModelError as error:
             logger.warning("The start case cannot be solved: %s", error.detail)
+            return

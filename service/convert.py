@@ -14,7 +14,7 @@ from shapely.geometry import MultiPolygon, Polygon
 from geo.answers import SiteReach
 from geo.case import FT_M, KT_MPS, NM_M, REACTION_LOW_HEIGHT_M, GlideCase, Margins
 from geo.footprint import Footprint
-from geo.terrain import TerrainSource
+from geo.terrain_source import TerrainSource
 from geo.wind import WindProfile
 from perf.errors import RecordError
 from perf.record import AircraftRecord, load_record

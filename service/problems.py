@@ -12,6 +12,7 @@ from typing import Any
 
 from fastapi import FastAPI
 from fastapi.exceptions import RequestValidationError
+from pydantic import BaseModel
 from starlette.exceptions import HTTPException
 from starlette.requests import Request
 from starlette.responses import Response
@@ -19,8 +20,10 @@ from starlette.types import ASGIApp, Message, Receive, Scope, Send
 
 from perf.errors import Cancelled, InputError, LimitError, ModelError, RecordError, TerrainError
 from service.allowed import allowed_at
+from service.schemas import FootprintRequest, SectionRequest
 
 logger = logging.getLogger("engineout")
+SECTION_PATH = "/api/section"
 MEDIA_TYPE = "application/problem+json"
 NAME = re.compile(r"[a-z][a-z0-9_]{0,39}")  # only such names may come back in a pointer
 
@@ -162,7 +165,9 @@ def _validation_kind(error: Mapping[str, Any], where: str) -> ProblemType:
     return INVALID_REQUEST
 
 
-def from_validation(found: Sequence[Mapping[str, Any]]) -> Response:
+def from_validation(
+    found: Sequence[Mapping[str, Any]], model: type[BaseModel] = FootprintRequest
+) -> Response:
     """Return the problem of a request that the schemas refuse; pydantic's input never shows."""
     entries: list[dict[str, Any]] = []
     kinds: set[ProblemType] = set()
@@ -170,7 +175,7 @@ def from_validation(found: Sequence[Mapping[str, Any]]) -> Response:
         parts = list(error["loc"])
         parts = parts[1:] if parts[:1] == ["body"] else parts
         detail = WORDS.get(error["type"], "This value is not allowed.")
-        entry = error_entry(parts, detail, allowed_at(parts))
+        entry = error_entry(parts, detail, allowed_at(parts, model))
         kinds.add(_validation_kind(error, entry["pointer"]))
         entries.append(entry)
     kind = kinds.pop() if len(kinds) == 1 else INVALID_REQUEST
@@ -212,9 +217,10 @@ def install(app: FastAPI, retry_after_s: int) -> None:
             logger.error("domain error without a problem type", exc_info=error)
         return from_domain(error, retry_after_s)
 
-    async def on_validation(_: Request, error: Exception) -> Response:
+    async def on_validation(request: Request, error: Exception) -> Response:
         assert isinstance(error, RequestValidationError)
-        return from_validation(error.errors())
+        model = SectionRequest if request.url.path == SECTION_PATH else FootprintRequest
+        return from_validation(error.errors(), model)
 
     async def on_http(_: Request, error: Exception) -> Response:
         assert isinstance(error, HTTPException)

@@ -8,7 +8,7 @@ import threading
 from collections import OrderedDict
 from dataclasses import dataclass
 from functools import lru_cache
-from math import atan, cos, degrees, pi, sinh
+from math import atan, cos, degrees, log2, pi, sinh
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,7 +26,8 @@ EQUATOR_M = 2.0 * pi * 6378137.0  # circumference of the sphere that web mercato
 
 SUN_AZIMUTH_RAD = 315.0 * pi / 180.0  # north-west, where readers expect the light
 SUN_ALTITUDE_RAD = 45.0 * pi / 180.0
-SHADE_STRENGTH = 0.62
+SHADE_STRENGTH = 0.66
+SHADOW_SOFTNESS = 0.6
 SEA_LOW_M, SEA_HIGH_M = -0.5, 0.25  # flat ground between these is drawn as sea
 SEA_SLOPE = 0.004
 SEA_RGB = (196.0, 207.0, 216.0)
@@ -84,29 +85,34 @@ def intervals_for(tile_m: float, cell_m: float) -> int:
     A power of two (or the greatest), so that neighbouring tiles share their edge samples.
     """
     wanted = tile_m / max(cell_m, 0.1)
-    intervals = INTERVALS_MIN
-    while intervals < wanted and intervals < 128:
-        intervals *= 2
-    return INTERVALS_MAX if wanted > 128 else intervals
+    if wanted > 181.0:  # nearer to the greatest than to 128
+        return INTERVALS_MAX
+    power = round(log2(max(wanted, 1.0)))
+    return int(min(max(1 << power, INTERVALS_MIN), 128))
 
 
 @lru_cache(maxsize=16)
 def cubic(intervals: int) -> tuple[Array, Array]:
-    """Return Catmull-Rom weights and their slopes at pixel centres.
+    """Return the weights of the samples at pixel centres, and their slopes per sample interval.
 
-    Both have shape ``(256, intervals + 3)``; slopes are per sample interval. The curve passes
-    through the samples and its slope is continuous, so the posts leave no facets.
+    Both have shape ``(256, intervals + 3)``. Uniform cubic B-spline: slope and curvature are
+    continuous, so the posts leave no facets; nothing overshoots.
+
+    Source
+    ------
+    de Boor, A Practical Guide to Splines (1978), chapter IX, uniform knots.
     """
     at = (np.arange(TILE_PX) + 0.5) / TILE_PX * intervals
     first = np.minimum(at.astype(np.int64), intervals - 1)
     t = at - first
-    value = 0.5 * np.stack([
-        -t + 2 * t**2 - t**3, 2 - 5 * t**2 + 3 * t**3, t + 4 * t**2 - 3 * t**3, -(t**2) + t**3,
-    ])  # fmt: skip
-    slope = 0.5 * np.stack([
-        -1 + 4 * t - 3 * t**2, -10 * t + 9 * t**2, 1 + 8 * t - 9 * t**2, -2 * t + 3 * t**2,
-    ])  # fmt: skip
-    weights, slopes = np.zeros((2, TILE_PX, intervals + 3))
+    value = np.stack([
+        (1 - t) ** 3, 3 * t**3 - 6 * t**2 + 4, -3 * t**3 + 3 * t**2 + 3 * t + 1, t**3,
+    ]) / 6.0  # fmt: skip
+    slope = np.stack([
+        -((1 - t) ** 2), 3 * t**2 - 4 * t, -3 * t**2 + 2 * t + 1, t**2,
+    ]) / 2.0  # fmt: skip
+    weights = np.zeros((TILE_PX, intervals + 3))
+    slopes = np.zeros_like(weights)
     rows = np.arange(TILE_PX)
     for k in range(4):
         weights[rows, first + k] = value[k]
@@ -131,14 +137,15 @@ def shade(east_slope: Array, north_slope: Array) -> Array:
 
     Source
     ------
-    Horn, Hill shading and the reflectance map, Proc. IEEE 69(1) (1981), Lambertian form.
+    Horn, Hill shading and the reflectance map, Proc. IEEE 69(1) (1981), Lambertian form; slopes
+    away from the light are compressed rather than cut off, so that their shape still shows.
     """
     light_east = np.sin(SUN_AZIMUTH_RAD) * np.cos(SUN_ALTITUDE_RAD)
     light_north = np.cos(SUN_AZIMUTH_RAD) * np.cos(SUN_ALTITUDE_RAD)
     up = np.sin(SUN_ALTITUDE_RAD)
-    lit = up - east_slope * light_east - north_slope * light_north
-    lit = np.maximum(lit / np.sqrt(1.0 + east_slope**2 + north_slope**2), 0.0)
-    return np.asarray(1.0 + SHADE_STRENGTH * (lit - up))
+    facing = up - east_slope * light_east - north_slope * light_north
+    change = facing / np.sqrt(1.0 + east_slope**2 + north_slope**2) - up
+    return np.asarray(1.0 + SHADE_STRENGTH * change / (1.0 + SHADOW_SOFTNESS * np.abs(change)))
 
 
 def colour(ground_m: Array, east_slope: Array, north_slope: Array, exaggeration: float) -> Array:
@@ -148,13 +155,13 @@ def colour(ground_m: Array, east_slope: Array, north_slope: Array, exaggeration:
     flat = np.hypot(east_slope, north_slope) < SEA_SLOPE
     sea = flat & (ground_m > SEA_LOW_M) & (ground_m < SEA_HIGH_M)
     tint[sea] = SEA_RGB
-    return np.clip(tint, 0.0, 255.0)
+    return np.asarray(np.clip(tint, 0.0, 255.0))
 
 
 def _box(bbox: tuple[float, float, float, float]) -> tuple[float, float, float, float]:
     """Return west, south, east, north [deg] with east beyond west, also across the date line."""
     west, south, east, north = bbox
-    return west, south, east + 360.0 if east < west else east, north
+    return west, south, west + (east - west) % 360.0, north
 
 
 class Relief:
@@ -258,7 +265,7 @@ class Relief:
         east_slope = weights @ filled @ slopes.T / step_m
         north_slope = -(slopes @ filled @ weights.T) / step_m
         pixel_m = tile_m / TILE_PX
-        exaggeration = 1.6 + 0.9 * np.clip(np.log2(pixel_m / 30.0) / 3.0, 0.0, 1.5)
+        exaggeration = 1.3 + 0.9 * np.clip(np.log2(pixel_m / 30.0) / 3.0, 0.0, 1.5)
         rgb = colour(smooth_m, east_slope, north_slope, float(exaggeration))
         void = known < 0.5
         rgb[void] = VOID_RGB

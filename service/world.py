@@ -10,13 +10,13 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
-from geo.sites import Site, load_sites
 from numpy.typing import NDArray
 from pydantic import ValidationError
 
 import geo.footprint
 from geo.case import FT_M, KT_MPS, SolveLimits
 from geo.footprint import Footprint
+from geo.sites import Site, load_sites, sites_feature_collection
 from geo.terrain import TerrainStore
 from perf.errors import InputError, TerrainError
 from perf.record import AircraftRecord, load_records
@@ -83,7 +83,7 @@ class World:
         InputError
             The altitude is not above the ground.
         """
-        ground_m = float(self.store.ground_m(np.array([lon_deg]), np.array([lat_deg]))[0])
+        ground_m = float(self.store.ground_m(lon_deg, lat_deg))
         if isnan(ground_m):
             raise TerrainError(
                 "There is no terrain at this position.", "position", "a place on the terrain loaded"
@@ -106,8 +106,10 @@ class World:
         path = self.settings.data / START_FILE
         if path.is_file() and path.stat().st_size <= START_FILE_MAX_BYTES:
             try:
-                request = FootprintRequest.model_validate(json.loads(path.read_bytes()))
-            except (ValidationError, ValueError, RecursionError):
+                case = json.loads(path.read_bytes())
+                case.pop("note", None)  # for people who read the file
+                request = FootprintRequest.model_validate(case)
+            except (ValidationError, ValueError, AttributeError, TypeError, RecursionError):
                 raise SettingsError(
                     f"{START_FILE} in the data folder is not a footprint request."
                 ) from None
@@ -117,20 +119,27 @@ class World:
     def _middle(self) -> dict[str, Any]:
         """Return a start over the middle of the first terrain file that has ground there."""
         aircraft = next(iter(self.records))
+        lon, lat, ground_m = 0.0, 0.0, 0.0
         for source in self.store.sources:
             west, south, east, north = source.bbox
-            lon, lat = round((west + east) / 2.0, 5), round((south + north) / 2.0, 5)
-            ground_m = float(self.store.ground_m(np.array([lon]), np.array([lat]))[0])
+            wide = (east - west) % 360.0
+            lon = round((west + wide / 2.0 + 180.0) % 360.0 - 180.0, 5)
+            lat = round((south + north) / 2.0, 5)
+            try:
+                ground_m = float(self.store.ground_m(lon, lat))
+            except TerrainError:  # a file of the folder is refused; the answers will say so
+                ground_m = 0.0
+                break
             if not isnan(ground_m):
-                altitude_ft = round((ground_m / FT_M + START_HEIGHT_FT) / 100.0) * 100.0
-                return {"position": [lon, lat], "altitude_ft": altitude_ft, "aircraft": aircraft}
-        raise SettingsError("No terrain file of the data folder has ground in its middle.")
+                break
+        altitude_ft = round(((0.0 if isnan(ground_m) else ground_m) / FT_M + START_HEIGHT_FT), -2)
+        return {"position": [lon, lat], "altitude_ft": altitude_ft, "aircraft": aircraft}
 
     def catalog(self) -> dict[str, Any]:
         """Return what this service has: aeroplanes, landing sites, terrain, margins, limits."""
         catalog = {
             "aircraft": [_aircraft_json(record) for record in self.records.values()],
-            "sites": sites_json(self.sites),
+            "sites": sites_feature_collection(self.sites),
             "terrain": [convert.source_json(source) for source in self.store.sources],
             "margins": margin_ranges(),
             "limits": [*CAUTIONS, *self.store.notes],
@@ -144,13 +153,11 @@ def load_world(settings: Settings) -> World:
     Raises
     ------
     SettingsError
-        The folder has no usable terrain or no aircraft record.
+        The folder has no aircraft record.
     ModelError
         A file of the folder is faulty; the detail names it.
     """
     store = TerrainStore(settings.data)
-    if not store.sources:
-        raise SettingsError(f"There is no elevation raster (*.tif) in {settings.data / 'terrain'}.")
     records = load_records(settings.data / "aircraft")
     if not records:
         raise SettingsError(f"There is no record (*.toml) in {settings.data / 'aircraft'}.")
@@ -169,15 +176,6 @@ def _aircraft_json(record: AircraftRecord) -> dict[str, Any]:
         "best_glide_eas_kt": round(polar.best_glide_eas_mps / KT_MPS, 1),
         "ratio": round(polar.ratio, 3),
     }
-
-
-def sites_json(sites: tuple[Site, ...]) -> dict[str, Any]:
-    """Return the landing sites as a GeoJSON FeatureCollection; null means unknown."""
-    features = [
-        {"type": "Feature", "geometry": site.geometry, "properties": dict(site.properties)}
-        for site in sites
-    ]
-    return {"type": "FeatureCollection", "features": features}
 
 
 def margin_ranges() -> dict[str, Any]:
