@@ -260,9 +260,10 @@ class Relief:
         weights, slopes = cubic(intervals)
         known = weights @ (~np.isnan(ground_m)).astype(np.float64) @ weights.T
         filled = fill_voids(ground_m)
-        smooth_m = weights @ filled @ weights.T
+        by_row = weights @ filled
+        smooth_m = by_row @ weights.T
         step_m = tile_m / intervals
-        east_slope = weights @ filled @ slopes.T / step_m
+        east_slope = by_row @ slopes.T / step_m
         north_slope = -(slopes @ filled @ weights.T) / step_m
         pixel_m = tile_m / TILE_PX
         exaggeration = 1.3 + 0.9 * np.clip(np.log2(pixel_m / 30.0) / 3.0, 0.0, 1.5)
@@ -272,7 +273,7 @@ class Relief:
         rgb[void & HATCH] = HATCH_RGB
         alpha = np.where(void & ~within, 0.0, 255.0)
         rgba = np.dstack([rgb, alpha])
-        image = Image.fromarray(rgba.astype(np.uint8), "RGBA")
+        image = Image.fromarray(rgba.astype(np.uint8))
         out = io.BytesIO()
         image.save(out, "PNG", compress_level=5)
         return out.getvalue()

@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 import rasterio
-from rasterio.transform import from_origin
+from rasterio import Affine
 from shapely.geometry import MultiPolygon, box
 
 from geo.answers import Explanation, GlidePath, PathPoint, ProfilePoint, Ridge, SiteReach
@@ -76,7 +76,7 @@ def write_data(folder: Path) -> Path:
     with rasterio.open(
         folder / "terrain" / "isle.tif", "w", driver="GTiff", width=POSTS, height=POSTS, count=1,
         dtype="float32", crs="EPSG:4326", nodata=-9999.0,
-        transform=from_origin(WEST - STEP_DEG / 2, NORTH + STEP_DEG / 2, STEP_DEG, STEP_DEG),
+        transform=Affine(STEP_DEG, 0, WEST - STEP_DEG / 2, 0, -STEP_DEG, NORTH + STEP_DEG / 2),
     ) as out:  # fmt: skip
         out.write(heights, 1)
     (folder / "aircraft" / "test-two.toml").write_text(RECORD, encoding="utf-8")
