@@ -16,13 +16,14 @@ from numpy.typing import ArrayLike, NDArray
 from perf.atmosphere import GRAVITY_MPS2, PRESSURE_MSL_PA, sigma
 from perf.errors import InputError
 from perf.polar import Polar, glide_angle_rad, glide_tangent
+from perf.shear import TrackWind, ascending
 
 Array = NDArray[np.float64]
 
 SLOWEST_MPS = 1.0  # a track with less ground speed than this is not held [m/s]
 LEAST_SHEAR_ROOM = 0.05  # below this share of the drag left for the descent the charge diverges [-]
 SLOWEST_STALL_FACTOR = 1.2  # the wind policy stays above this multiple of the stall speed [-]
-N_SPEEDS = 12  # speeds tried by the wind policy before it refines
+N_SPEEDS = 9  # speeds tried by the wind policy before it refines
 
 
 @dataclass(frozen=True)
@@ -116,7 +117,7 @@ def build_glide_table(
     InputError
         A value is out of its range, or the arrays do not fit together.
     """
-    alt = _levels("alt_levels_m", alt_levels_m)
+    alt = ascending("alt_levels_m", alt_levels_m)
     if n_tracks < 4:
         raise InputError("There are too few tracks.", "n_tracks", "4 or more")
     if speed_policy not in ("manual", "wind"):
@@ -126,7 +127,7 @@ def build_glide_table(
             raise InputError("A margin is out of range.", name, "0 or more")
     track: Array = np.arange(n_tracks, dtype=np.float64) * (2.0 * math.pi / n_tracks)
     tas_per_eas = 1.0 / np.sqrt(sigma(alt, isa_offset_k, qnh_pa))
-    wind = _Wind(wind_alt_m, wind_east_mps, wind_north_mps, alt, track)
+    wind = TrackWind(wind_alt_m, wind_east_mps, wind_north_mps, alt, track)
     air = _Air(polar, wind, tas_per_eas[:, None], wind_error_mps, downdraft_mps)
     eas: float | Array = polar.best_glide_eas_mps
     if speed_policy == "wind":
@@ -135,62 +136,13 @@ def build_glide_table(
     return _table(air, alt, track, eas, loss)
 
 
-class _Wind:
-    """The wind at the table's levels, and its change in the intervals between them."""
-
-    def __init__(
-        self, alt_m: ArrayLike, east: ArrayLike, north: ArrayLike, levels: Array, track: Array
-    ) -> None:
-        source = _levels("wind_alt_m", alt_m, least=0)
-        east_mps, north_mps = np.asarray(east, np.float64), np.asarray(north, np.float64)
-        if not source.shape == east_mps.shape == north_mps.shape:
-            raise InputError("The wind arrays differ in length.", "wind_alt_m", "equal lengths")
-        if not (np.all(np.isfinite(east_mps)) and np.all(np.isfinite(north_mps))):
-            raise InputError("A wind component is not finite.", "wind_east_mps", "finite numbers")
-        if source.size == 0:
-            source, east_mps, north_mps = np.zeros(1), np.zeros(1), np.zeros(1)
-        self.east = np.interp(levels, source, east_mps)
-        self.north = np.interp(levels, source, north_mps)
-        # Wind levels inside the table's intervals count too: a thin layer is not stepped over.
-        inside = source[(source > levels[0]) & (source < levels[-1])]
-        merged = np.union1d(levels, inside)
-        self.thickness = np.diff(levels)[:, None]
-        self.first = np.searchsorted(merged, levels[:-1])  # first piece of each interval
-        self.interval = np.searchsorted(levels, merged[:-1], side="right") - 1
-        self.extra = np.setdiff1d(np.arange(merged.size - 1), self.first)
-        rise_east = np.diff(np.interp(merged, source, east_mps))[:, None]
-        rise_north = np.diff(np.interp(merged, source, north_mps))[:, None]
-        self.sheared = bool(np.any(rise_east != 0.0) or np.any(rise_north != 0.0))
-        self.along, self.across = _turned(track, self.east[:, None], self.north[:, None])
-        self.rise_along, self.rise_across = _turned(track, rise_east, rise_north)
-
-    def headwind_slope(self, level: Array, root: Array) -> Array:
-        """Return the rise of headwind with height that is charged at each level [1/s].
-
-        Rises only: what a falling headwind gives back is not credited, not even within one
-        interval. A level takes the larger of the intervals above and below it. The heading of
-        an interval is that of its lower level.
-        """
-        at = self.interval
-        rise = self.across[at] * self.rise_across - root[at] * self.rise_along
-        rise /= level[at] if level.shape[0] > 1 else level
-        np.maximum(rise, 0.0, out=rise)
-        slope = rise[self.first]
-        for piece in self.extra:
-            slope[at[piece]] += rise[piece]
-        slope /= self.thickness
-        charged: Array = np.concatenate((slope, slope[-1:]))
-        np.maximum(charged[1:-1], slope[:-1], out=charged[1:-1])
-        return charged
-
-
 class _Air:
     """Everything that the loss depends on except the speed flown."""
 
     def __init__(
         self,
         polar: Polar,
-        wind: _Wind,
+        wind: TrackWind,
         tas_per_eas: Array,
         wind_error_mps: float,
         downdraft_mps: float,
@@ -290,19 +242,3 @@ def _table(air: _Air, alt: Array, track: Array, eas: float | Array, loss: Array)
         wind_north_mps=air.wind.north,
         holdable_below_m=float(lost[0]) if lost.size else math.inf,
     )
-
-
-def _turned(track: Array, east: Array, north: Array) -> tuple[Array, Array]:
-    """Return components along each track and to its right, the tracks as columns."""
-    sine, cosine = np.sin(track), np.cos(track)
-    return east * sine + north * cosine, east * cosine - north * sine
-
-
-def _levels(name: str, values: ArrayLike, least: int = 1) -> Array:
-    """Return ascending, distinct, finite levels, or raise in words."""
-    levels = np.asarray(values, dtype=np.float64)
-    if levels.ndim != 1 or levels.size < least or not np.all(np.isfinite(levels)):
-        raise InputError("The levels are not a list of finite numbers.", name, "finite numbers")
-    if np.any(np.diff(levels) <= 0.0):
-        raise InputError("The levels do not ascend.", name, "ascending, distinct")
-    return levels
