@@ -64,19 +64,24 @@ def open_raster(path: Path, dtypes: tuple[str, ...] = HEIGHT_TYPES) -> Iterator[
     TerrainError
         The file is of another format, cut short, too large, or packed too densely.
     """
-    driver = DRIVERS.get(path.suffix.lower())
-    if driver is None:
+    if path.suffix.lower() not in DRIVERS:
         raise refusal(path, "has a suffix that is not read")
-    with rasterio.Env(**_ENVIRONMENT):
-        try:
-            dataset = rasterio.open(path, driver=driver)
-        except NotGeoreferencedWarning:  # where warnings are errors
-            raise refusal(path, "does not say where it lies") from None
-        except (RasterioError, OSError, ValueError):
-            raise refusal(path, "is cut short or is not a raster of its kind") from None
-        with dataset:
-            check(dataset, path, dtypes)
+    try:
+        opened = open_unchecked(path)
+    except NotGeoreferencedWarning:  # where warnings are errors
+        raise refusal(path, "does not say where it lies") from None
+    except (RasterioError, OSError, ValueError):
+        raise refusal(path, "is cut short or is not a raster of its kind") from None
+    with opened as dataset:
+        check(dataset, path, dtypes)
+        with rasterio.Env(**_ENVIRONMENT):
             yield dataset
+
+
+def open_unchecked(path: Path) -> Any:
+    """Return an open dataset of a file that has not been checked: read its header, nothing else."""
+    with rasterio.Env(**_ENVIRONMENT):
+        return rasterio.open(path, driver=DRIVERS[path.suffix.lower()])
 
 
 def check(dataset: Any, path: Path, dtypes: tuple[str, ...]) -> None:
@@ -112,6 +117,10 @@ def read_window(dataset: Any, path: Path, window: tuple[int, int, int, int]) -> 
 
     Parameters
     ----------
+    dataset
+        As `open_raster` gives it.
+    path
+        Its file, for messages.
     window
         ``(row0, row1, column0, column1)``, within the raster.
 
@@ -126,12 +135,11 @@ def read_window(dataset: Any, path: Path, window: tuple[int, int, int, int]) -> 
     """
     row0, row1, column0, column1 = window
     try:
-        values = dataset.read(
-            1, window=Window(column0, row0, column1 - column0, row1 - row0), masked=True
-        )
+        part = Window(column0, row0, column1 - column0, row1 - row0)
+        values: NDArray[Any] = np.ma.asanyarray(dataset.read(1, window=part, masked=True))
     except (RasterioError, OSError, ValueError, MemoryError):
         raise refusal(path, "is cut short or damaged") from None
-    return np.ma.asanyarray(values)
+    return values
 
 
 def refusal(path: Path, reason: str) -> TerrainError:

@@ -2,26 +2,31 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from geo import terrain_kernels as kernels
+from geo.canopy import NO_DATA, LandCover
 from geo.frame import Frame
-from geo.raster_guard import raster_files
-from geo.terrain_source import TerrainSource, group, read_header
-from geo.terrain_tiles import (
-    CACHE_BYTES,
-    TILE_CELLS,
-    Tile,
-    TileCache,
-    TileKey,
-    block_tops,
+from geo.obstacles import (
+    ASSUMED_HORIZONTAL_FT,
+    ASSUMED_VERTICAL_FT,
+    ObstacleField,
+    load_obstacles,
+    obstacle_files,
 )
+from geo.raster_guard import raster_files
+from geo.terrain_layer import group, meets
+from geo.terrain_source import NOT_STATED, Bbox, TerrainSource, known_bbox, read_header
+from geo.terrain_tiles import CACHE_BYTES, TILE_CELLS, CellBlock, Tile, TileCache, TileKey
 from perf.errors import TerrainError
 
+Loaded = TypeVar("Loaded")
 BLOCK_TILES = 4  # tiles built at once along each side
 
 Values = NDArray[np.float64]
@@ -67,28 +72,62 @@ class TerrainStore:
     """
 
     def __init__(self, folder: Path, cache_bytes: int = CACHE_BYTES) -> None:
-        paths = raster_files(Path(folder) / "terrain")
+        folder = Path(folder)
+        paths = raster_files(folder / "terrain")
         if not paths:
             raise TerrainError("The data folder has no terrain folder with a .tif file in it.")
-        headers, refused = [], []
-        for path in paths:
-            try:
-                headers.append(read_header(path))
-            except TerrainError as error:
-                refused.append(error)
-        self._layers, more = group(headers)
-        self.refused: tuple[TerrainError, ...] = (*refused, *more)
+        self._refused: list[tuple[TerrainError, Bbox | None]] = []
+        headers = [header for path in paths for header in self._try(path, read_header)]
+        self._layers, without_place = group(headers)
+        self._refused.extend((error, None) for error in without_place)
         self._shown = [
-            [(layer.describe(file)) for file, _, _ in layer.members] for layer in self._layers
+            [layer.describe(file) for file, _, _ in layer.members] for layer in self._layers
         ]
-        self.sources: tuple[TerrainSource, ...] = tuple(
-            source for layer in self._shown for source in layer
-        )
-        self.notes: tuple[str, ...] = (
-            "No land-cover file: tree heights are not allowed for.",
-            "No obstacle file: masts and wires are not allowed for.",
-        )
+        covers = [
+            cover
+            for path in raster_files(folder / "landcover")
+            for cover in self._try(path, LandCover.load)
+        ]
+        self._covers = sorted(covers, key=lambda cover: cover.layer.cell_m)
+        found = [
+            obstacle
+            for path in obstacle_files(folder / "obstacles")
+            for obstacles in self._try(path, load_obstacles)
+            for obstacle in obstacles
+        ]
+        self._obstacles = ObstacleField(found, self.ground_m)
         self._cache = TileCache(self._build, cache_bytes)
+
+    @property
+    def sources(self) -> tuple[TerrainSource, ...]:
+        """Every terrain file that is used, the finest first."""
+        return tuple(source for layer in self._shown for source in layer)
+
+    @property
+    def refused(self) -> tuple[TerrainError, ...]:
+        """Why files of the folder are refused; an answer that may need one is refused too."""
+        return tuple(error for error, _ in self._refused)
+
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """Sentences on what the terrain of this folder leaves out."""
+        notes = [f"{error.detail} No answer is given where it may lie." for error in self.refused]
+        if self._covers:
+            notes.append("Tree height is allowed for only where a land-cover file lies.")
+        else:
+            notes.append("No land-cover file: tree height is not allowed for.")
+        if not self._obstacles.obstacles:
+            notes.append("No obstacle file: masts, cranes and wires are not allowed for.")
+        assumed = sum(obstacle.assumed for obstacle in self._obstacles.obstacles)
+        if assumed:
+            notes.append(
+                f"{assumed} obstacles state no accuracy: {ASSUMED_HORIZONTAL_FT:.0f} ft "
+                f"horizontally and {ASSUMED_VERTICAL_FT:.0f} ft vertically are allowed for."
+            )
+        silent = [s.file for s in self.sources if s.vertical_unit.endswith(f"({NOT_STATED})")]
+        if silent:
+            notes.append(f"Heights taken as metres, no unit is stated: {_list(silent)}.")
+        return tuple(notes)
 
     def window(
         self, frame: Frame, col0: int, row0: int, n_cols: int, n_rows: int, cell_m: float
@@ -111,7 +150,9 @@ class TerrainStore:
         TerrainError
             A terrain file that may be needed here is refused.
         """
-        self._refuse()
+        x_m = (col0 + np.array([0.0, n_cols / 2, n_cols])) * cell_m
+        y_m = (row0 + np.array([0.0, n_rows / 2, n_rows])) * cell_m
+        self._refuse(*frame.to_lonlat(*np.meshgrid(x_m, y_m)))
         tile_rows = range(row0 // TILE_CELLS, (row0 + n_rows - 1) // TILE_CELLS + 1)
         tile_cols = range(col0 // TILE_CELLS, (col0 + n_cols - 1) // TILE_CELLS + 1)
         keys = [(frame, float(cell_m), row, col) for row in tile_rows for col in tile_cols]
@@ -139,25 +180,68 @@ class TerrainStore:
         TerrainError
             A terrain file that may be needed here is refused.
         """
-        self._refuse()
-        lon, lat = np.broadcast_arrays(np.asarray(lon_deg, float), np.asarray(lat_deg, float))
+        lon, lat, shape = _flat(lon_deg, lat_deg)
         out = np.full(lon.size, np.nan)
-        flat_lon, flat_lat = lon.ravel(), lat.ravel()
+        known = np.isfinite(lon) & np.isfinite(lat)
+        self._refuse(lon[known], lat[known])
         for layer in self._layers:
-            left = np.flatnonzero(np.isnan(out) & np.isfinite(flat_lon) & np.isfinite(flat_lat))
+            left = np.flatnonzero(np.isnan(out) & known)
             if left.size == 0:
                 break
-            out[left] = layer.heights_m(flat_lon[left], flat_lat[left])
-        return out.reshape(lon.shape)
+            if layer.near(lon[left], lat[left]):
+                out[left] = layer.heights_m(lon[left], lat[left])
+        return out.reshape(shape)
 
     def surface_m(self, lon_deg: ArrayLike, lat_deg: ArrayLike) -> Values:
-        """Return the height of the ground with canopy and obstacles [m], NaN where void."""
-        return self.ground_m(lon_deg, lat_deg)
+        """Return the height of the ground with canopy and obstacles [m], NaN where void.
 
-    def _refuse(self) -> None:
-        """Raise the first refusal: a refused file may be the one that is needed here."""
-        if self.refused:
-            raise self.refused[0]
+        Parameters
+        ----------
+        lon_deg, lat_deg
+            Places, WGS 84 [deg], any shape. A wire or mast counts within its horizontal
+            accuracy plus 30 m.
+        """
+        lon, lat, shape = _flat(lon_deg, lat_deg)
+        out = self.ground_m(lon, lat)
+        known = np.flatnonzero(np.isfinite(out))
+        lon, lat, heights_m = lon[known], lat[known], out[known]
+        canopy_m = np.zeros(known.size, dtype=np.float32)
+        for cover in self._covers:
+            canopy_m = np.maximum(canopy_m, cover.canopy_m(cover.codes_at(lon, lat)))
+        heights_m += canopy_m
+        self._obstacles.raise_points(lon, lat, heights_m)
+        out[known] = heights_m
+        return out.reshape(shape)
+
+    def landcover_at(self, lon_deg: ArrayLike, lat_deg: ArrayLike) -> list[str | None]:
+        """Return the name of the land-cover class at each place, None where there is none.
+
+        Parameters
+        ----------
+        lon_deg, lat_deg
+            Places, WGS 84 [deg], any shape; the list follows their flat order.
+        """
+        lon, lat, _ = _flat(lon_deg, lat_deg)
+        names: list[str | None] = [None] * lon.size
+        for cover in reversed(self._covers):
+            for place, code in enumerate(cover.codes_at(lon, lat).tolist()):
+                if code != NO_DATA:
+                    names[place] = cover.name_of(code)
+        return names
+
+    def _try(self, path: Path, load: Callable[[Path], Loaded]) -> list[Loaded]:
+        """Return what a file holds, in a list; an empty one, and a refusal noted, if faulty."""
+        try:
+            return [load(path)]
+        except TerrainError as error:
+            self._refused.append((error, known_bbox(path)))
+            return []
+
+    def _refuse(self, lon_deg: Values, lat_deg: Values) -> None:
+        """Raise the first refusal of a file that may be needed at the places."""
+        for error, bbox in self._refused:
+            if bbox is None or (lon_deg.size and meets(bbox, lon_deg, lat_deg)):
+                raise error
 
     def _build(self, keys: list[TileKey]) -> dict[TileKey, Tile]:
         """Return tiles, built in blocks."""
@@ -176,12 +260,20 @@ class TerrainStore:
         n_rows = (max(key[2] for key in keys) - row + 1) * TILE_CELLS
         n_cols = (max(key[3] for key in keys) - col + 1) * TILE_CELLS
         row0, col0 = row * TILE_CELLS, col * TILE_CELLS
-        tops, used = block_tops(self._layers, frame, cell_m, row0, col0, n_rows, n_cols)
+        block = CellBlock(frame, cell_m, row0, col0, n_rows, n_cols)
+        tops, used = block.composite(self._layers)
+        if self._covers:
+            canopy_m = np.zeros(tops.shape, dtype=np.float32)
+            for cover in self._covers:
+                cover.raise_cells(canopy_m, block.lon_deg, block.lat_deg, block.step)
+            tops += canopy_m
+        self._obstacles.raise_cells(tops, frame, cell_m, row0, col0)
         built = {}
         for key in keys:
             r, c = (key[2] - row) * TILE_CELLS, (key[3] - col) * TILE_CELLS
-            part = tops[r : r + TILE_CELLS, c : c + TILE_CELLS]
-            built[key] = Tile(_rounded_up(part), used)
+            part = tops[r : r + TILE_CELLS, c : c + TILE_CELLS].copy()
+            part.flags.writeable = False
+            built[key] = Tile(part, used)
         return built
 
 
@@ -191,13 +283,18 @@ def _overlap(start: int, length: int) -> tuple[slice, slice]:
     return slice(low, high), slice(low - start, high - start)
 
 
-def _rounded_up(values: Values) -> NDArray[np.float32]:
-    """Return float32 values that are never below the given ones, read-only."""
-    out = values.astype(np.float32)
-    low = out < values
-    out[low] = np.nextafter(out[low], np.float32(np.inf))
-    out.flags.writeable = False
-    return out
+def _flat(lon_deg: ArrayLike, lat_deg: ArrayLike) -> tuple[Values, Values, tuple[int, ...]]:
+    """Return places as two flat float64 arrays, and their shape."""
+    lon, lat = np.broadcast_arrays(
+        np.asarray(lon_deg, dtype=np.float64), np.asarray(lat_deg, dtype=np.float64)
+    )
+    return lon.ravel(), lat.ravel(), lon.shape
+
+
+def _list(names: list[str]) -> str:
+    """Return names in a row, at most three."""
+    more = f" and {len(names) - 3} more" if len(names) > 3 else ""
+    return ", ".join(names[:3]) + more
 
 
 def warm_up() -> None:

@@ -14,13 +14,21 @@ import math
 
 import numpy as np
 from numba import njit
+from numpy.typing import NDArray
+
+Posts = NDArray[np.float32]
+Values = NDArray[np.float64]
+Flags = NDArray[np.uint8]
 
 NO_TOP = -np.inf  # no valid point of the surface has been found in the cell
+SKIN = 1e-3  # of a pixel: a cell that shares no more than a side with a pixel does not touch it
 TOUCH_M = 0.05  # posts this close to a cell count as in it: covers the mapping's interpolation
 
 
-@njit(nogil=True, cache=True)
-def segment_top(posts, u0, v0, u1, v1, i, j, ta, tb):
+@njit(nogil=True, cache=True, error_model="numpy")
+def segment_top(
+    posts: Posts, u0: float, v0: float, u1: float, v1: float, i: int, j: int, ta: float, tb: float
+) -> float:
     """Return the highest value on part of a segment within one patch, NaN where it is void.
 
     The segment runs from (u0, v0) at t = 0 to (u1, v1) at t = 1; the part is ta .. tb, t in 0 .. 1.
@@ -43,16 +51,15 @@ def segment_top(posts, u0, v0, u1, v1, i, j, ta, tb):
     base = corner + east * start_u + north * start_v + twist * start_u * start_v
     slope = east * du + north * dv + twist * (start_u * dv + start_v * du)
     bend = twist * du * dv
-    top = base + max(ta * (slope + bend * ta), tb * (slope + bend * tb))
-    if bend < 0.0:
-        vertex = -slope / (2.0 * bend)
-        if ta < vertex < tb:
-            top = max(top, base + vertex * (slope + bend * vertex))
+    rise_a, rise_b = ta * (slope + bend * ta), tb * (slope + bend * tb)
+    top = base + (rise_a if rise_a > rise_b else rise_b)
+    if slope + 2.0 * bend * ta > 0.0 > slope + 2.0 * bend * tb:
+        top = base - 0.25 * slope * slope / bend
     return top
 
 
-@njit(nogil=True, cache=True)
-def edge_top(posts, u0, v0, u1, v1):
+@njit(nogil=True, cache=True, error_model="numpy")
+def edge_top(posts: Posts, u0: float, v0: float, u1: float, v1: float) -> tuple[float, int]:
     """Return (highest valid value, 1 if any of it is void else 0) along a straight edge."""
     if not (math.isfinite(u0) and math.isfinite(u1) and math.isfinite(v0) and math.isfinite(v1)):
         return NO_TOP, 1
@@ -72,8 +79,8 @@ def edge_top(posts, u0, v0, u1, v1):
         value = segment_top(posts, u0, v0, u1, v1, i, j, ta, tb)
         if math.isnan(value):
             void = 1
-        else:
-            top = max(top, value)
+        elif value > top:
+            top = value
         if tb >= 1.0:
             return top, void
         if next_u <= tb:
@@ -83,8 +90,8 @@ def edge_top(posts, u0, v0, u1, v1):
         ta = tb
 
 
-@njit(nogil=True, cache=True)
-def fill_row(lattice, row, step, out):
+@njit(nogil=True, cache=True, error_model="numpy")
+def fill_row(lattice: Values, row: int, step: int, out: Values) -> None:
     """Write a row of vertices, interpolated from a lattice with a point every `step` vertices."""
     upper = min(row // step, lattice.shape[0] - 2)
     share = (row - upper * step) / step
@@ -96,16 +103,19 @@ def fill_row(lattice, row, step, out):
         out[(k + 1) * step] = right
 
 
-@njit(nogil=True, cache=True)
-def raise_to(top, void, row, col, value, missing):
+@njit(nogil=True, cache=True, error_model="numpy")
+def raise_to(top: Values, void: Flags, row: int, col: int, value: float, missing: int) -> None:
     """Take an edge's or a post's value into the cell, if the cell is one of the grid."""
     if 0 <= row < top.shape[0] and 0 <= col < top.shape[1]:
-        top[row, col] = max(top[row, col], value)
+        if value > top[row, col]:
+            top[row, col] = value
         void[row, col] |= missing
 
 
-@njit(nogil=True, cache=True)
-def walk_edges(posts, lattice_u, lattice_v, step, top, void):
+@njit(nogil=True, cache=True, error_model="numpy")
+def walk_edges(
+    posts: Posts, lattice_u: Values, lattice_v: Values, step: int, top: Values, void: Flags
+) -> None:
     """Raise every cell to the highest point along its edges; mark those that touch a void.
 
     Parameters
@@ -114,6 +124,8 @@ def walk_edges(posts, lattice_u, lattice_v, step, top, void):
         Heights [m], shape ``(n, m)``, NaN where void.
     lattice_u, lattice_v
         Post coordinates of every `step`-th cell corner, shape ``(rows/step + 1, cols/step + 1)``.
+    step
+        Cells from one point of the lattice to the next.
     top, void
         Float64 and uint8, shape ``(rows, cols)``, changed in place.
     """
@@ -139,8 +151,16 @@ def walk_edges(posts, lattice_u, lattice_v, step, top, void):
         v_row, v_next = v_next, v_row
 
 
-@njit(nogil=True, cache=True)
-def scatter_posts(posts, lattice_x, lattice_y, step, touch, top, void):
+@njit(nogil=True, cache=True, error_model="numpy")
+def scatter_posts(
+    posts: Posts,
+    lattice_x: Values,
+    lattice_y: Values,
+    step: int,
+    touch: float,
+    top: Values,
+    void: Flags,
+) -> None:
     """Raise every cell to the posts in it; mark the cells that hold a void post.
 
     Parameters
@@ -149,6 +169,8 @@ def scatter_posts(posts, lattice_x, lattice_y, step, touch, top, void):
         Heights [m], shape ``(n, m)``, NaN where void.
     lattice_x, lattice_y
         Cell coordinates (column, row) of every `step`-th post, covering all of `posts`.
+    step
+        Posts from one point of the lattice to the next.
     touch
         Posts outside a cell by no more than this [cells] count as in it.
     top, void
@@ -172,8 +194,8 @@ def scatter_posts(posts, lattice_x, lattice_y, step, touch, top, void):
                     raise_to(top, void, row, col, value, missing)
 
 
-@njit(nogil=True, cache=True)
-def merge(top, void, out, done):
+@njit(nogil=True, cache=True, error_model="numpy")
+def merge(top: Values, void: Flags, out: Values, done: Flags) -> int:
     """Take a coarser source's cells into those that finer ones did not cover whole.
 
     Parameters
@@ -198,8 +220,21 @@ def merge(top, void, out, done):
     return taken
 
 
-@njit(nogil=True, cache=True)
-def sample(posts, u, v, out):
+@njit(nogil=True, cache=True, error_model="numpy")
+def finish(top: Values, done: Flags) -> Posts:
+    """Return the tops as float32, never below the given ones; NaN where a cell is not covered."""
+    out = np.empty(top.shape, dtype=np.float32)
+    for row in range(top.shape[0]):
+        for col in range(top.shape[1]):
+            value = np.float32(top[row, col]) if done[row, col] else np.float32(np.nan)
+            if value < top[row, col]:
+                value = np.nextafter(value, np.float32(np.inf))
+            out[row, col] = value
+    return out
+
+
+@njit(nogil=True, cache=True, error_model="numpy")
+def sample(posts: Posts, u: Values, v: Values, out: Values) -> None:
     """Write the bilinear height at each point whose `out` is NaN, where the patch is not void.
 
     Parameters
@@ -222,6 +257,71 @@ def sample(posts, u, v, out):
         out[k] = south * (1.0 - t) + north * t
 
 
+@njit(nogil=True, cache=True, error_model="numpy")
+def touched(values: Posts, lattice_u: Values, lattice_v: Values, step: int, out: Posts) -> None:
+    """Raise `out` to the largest value of the pixels that each cell touches.
+
+    Parameters
+    ----------
+    values
+        One number per pixel, shape ``(n, m)``; pixel (j, i) reaches from (j, i) to (j+1, i+1).
+    lattice_u, lattice_v
+        Pixel coordinates of every `step`-th cell corner.
+    step
+        Cells from one point of the lattice to the next.
+    out
+        Shape ``(rows, cols)``, changed in place.
+    """
+    n_rows, n_cols = out.shape
+    u_row, v_row = np.empty(n_cols + 1), np.empty(n_cols + 1)
+    u_next, v_next = np.empty(n_cols + 1), np.empty(n_cols + 1)
+    for row in range(n_rows):
+        fill_row(lattice_u, row, step, u_row)
+        fill_row(lattice_v, row, step, v_row)
+        fill_row(lattice_u, row + 1, step, u_next)
+        fill_row(lattice_v, row + 1, step, v_next)
+        for k in range(n_cols):
+            west = min(u_row[k], u_row[k + 1], u_next[k], u_next[k + 1])
+            east = max(u_row[k], u_row[k + 1], u_next[k], u_next[k + 1])
+            low = min(v_row[k], v_row[k + 1], v_next[k], v_next[k + 1])
+            high = max(v_row[k], v_row[k + 1], v_next[k], v_next[k + 1])
+            if not (math.isfinite(east - west) and math.isfinite(high - low)):
+                continue
+            i0, i1 = max(math.floor(west + SKIN), 0), math.floor(east - SKIN) + 1
+            j0, j1 = max(math.floor(low + SKIN), 0), math.floor(high - SKIN) + 1
+            for j in range(j0, min(j1, values.shape[0])):
+                for i in range(i0, min(i1, values.shape[1])):
+                    out[row, k] = max(out[row, k], values[j, i])
+
+
+@njit(nogil=True, cache=True, error_model="numpy")
+def raise_discs(top: Posts, x: Values, y: Values, radius: Values, height_m: Values) -> None:
+    """Raise every cell that comes within the radius of a point to the point's height.
+
+    Parameters
+    ----------
+    top
+        Cells [m], shape ``(rows, cols)``, changed in place; a void cell stays void.
+    x, y, radius
+        Points and radii in cells, from the south-west corner of the grid, shape ``(k,)``.
+    height_m
+        Height of each point [m]; NaN raises nothing.
+    """
+    n_rows, n_cols = top.shape
+    for k in range(x.size):
+        reach = radius[k]
+        for row in range(
+            max(math.floor(y[k] - reach), 0), min(math.floor(y[k] + reach) + 1, n_rows)
+        ):
+            dy = max(row - y[k], y[k] - row - 1.0, 0.0)
+            for col in range(
+                max(math.floor(x[k] - reach), 0), min(math.floor(x[k] + reach) + 1, n_cols)
+            ):
+                dx = max(col - x[k], x[k] - col - 1.0, 0.0)
+                if dx * dx + dy * dy <= reach * reach and height_m[k] > top[row, col]:
+                    top[row, col] = height_m[k]
+
+
 def warm_up_terrain() -> None:
     """Compile every kernel of this file (or load it from the cache) on a tiny input."""
     posts = np.zeros((3, 3), dtype=np.float32)
@@ -230,4 +330,7 @@ def warm_up_terrain() -> None:
     walk_edges(posts, lattice, lattice, 2, top, void)
     scatter_posts(posts, lattice, lattice, 2, 0.01, top, void)
     merge(top, void, np.full((2, 2), NO_TOP), np.zeros((2, 2), dtype=np.uint8))
+    cells = finish(top, void)
+    touched(posts, lattice, lattice, 2, cells)
+    raise_discs(cells, np.zeros(1), np.zeros(1), np.ones(1), np.zeros(1))
     sample(posts, np.zeros(1), np.zeros(1), np.full(1, np.nan))

@@ -1,34 +1,33 @@
-"""Terrain files: what each says about itself, and layers of files that share one grid."""
+"""Terrain files: what each says about itself, and its heights in metres."""
 
 from __future__ import annotations
 
-import math
-import threading
-from collections import OrderedDict
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 import numpy as np
-import pyproj
 from affine import Affine
 from numpy.typing import NDArray
-from pyproj import CRS, Geod, Transformer
-from pyproj.exceptions import CRSError, ProjError
+from pyproj import CRS
+from pyproj.exceptions import CRSError
+from rasterio.errors import RasterioError
+from rasterio.warp import transform_bounds
 
-from geo import terrain_kernels as kernels
-from geo.raster_guard import HEIGHT_TYPES, open_raster, read_window, refusal
-from perf.errors import TerrainError
+from geo.raster_guard import (
+    DRIVERS,
+    HEIGHT_TYPES,
+    open_raster,
+    open_unchecked,
+    read_window,
+    refusal,
+)
 
-Values = NDArray[np.float64]
 Posts = NDArray[np.float32]
 Bbox = tuple[float, float, float, float]
 
 NOT_STATED = "not stated"
 LOWEST_M, HIGHEST_M = -500.0, 9000.0  # land lies between -430 m and 8849 m; outside is a void
-SAME_GRID_CELLS = 0.01  # files whose posts agree this well share a grid
-CHUNK_POSTS = 256  # side of the squares of posts that single heights are read from
-CHUNKS_KEPT = 256  # of each layer, 64 MB
 _FOOT_M, _SURVEY_FOOT_M = 0.3048, 1200.0 / 3937.0  # NIST Special Publication 811 (2008), B.6
 UNITS_M = {
     **dict.fromkeys(("m", "metre", "meter", "metres", "meters"), ("m", 1.0)),
@@ -38,10 +37,6 @@ UNITS_M = {
         ("US survey ft", _SURVEY_FOOT_M),
     ),
 }
-
-pyproj.network.set_network_enabled(active=False)
-_GEOD = Geod(ellps="WGS84")
-_LOCAL = threading.local()  # Transformer objects must not be shared between threads
 
 
 @dataclass(frozen=True)
@@ -121,7 +116,7 @@ def _split(crs: CRS) -> tuple[CRS, CRS | None]:
 
 
 def _vertical_unit(path: Path, stated: str | None, vertical: CRS | None) -> tuple[str, float]:
-    """Return the name of the height unit and its length [m]: tag, else band, else CRS, else metre."""
+    """Return name and length [m] of the height unit: of tag, else band, else CRS, else metre."""
     if stated:
         if stated.strip().lower() not in UNITS_M:
             raise refusal(
@@ -136,228 +131,6 @@ def _vertical_unit(path: Path, stated: str | None, vertical: CRS | None) -> tupl
     return f"m ({NOT_STATED})", 1.0
 
 
-def transformers(crs: CRS) -> tuple[Any, Any] | None:
-    """Return this thread's transforms from and to WGS 84, None where there is nothing to do."""
-    held: dict[str, Any] = _LOCAL.__dict__.setdefault("held", {})
-    key = crs.to_wkt()
-    if key not in held:
-        wgs84 = CRS.from_epsg(4326)
-        if crs.is_geographic and crs.to_epsg(min_confidence=90) == 4326:
-            held[key] = None
-        else:
-            held[key] = (
-                Transformer.from_crs(wgs84, crs, always_xy=True),
-                Transformer.from_crs(crs, wgs84, always_xy=True),
-            )
-    pair: tuple[Any, Any] | None = held[key]
-    return pair
-
-
-@dataclass
-class Layer:
-    """Files on one grid of posts. Post (j, i) of the layer is that of its first file.
-
-    Parameters
-    ----------
-    first
-        The file that fixes the grid.
-    members
-        Triples of file, row and column of its first post in the layer.
-    turn
-        Columns once round the Earth, 0 where the grid does not close.
-    """
-
-    first: RasterFile
-    members: list[tuple[RasterFile, int, int]] = field(default_factory=list)
-    turn: int = 0
-    cell_m: float = 0.0
-    centre_lon_deg: float = 0.0
-    centre_lat_deg: float = 0.0
-    per_degree: bool = False
-    bboxes: list[Bbox] = field(default_factory=list)
-    chunks: OrderedDict[tuple[int, int], Posts | None] = field(default_factory=OrderedDict)
-    lock: threading.Lock = field(default_factory=threading.Lock)
-
-    @staticmethod
-    def of(first: RasterFile) -> Layer:
-        """Return a layer of one file.
-
-        Raises
-        ------
-        TerrainError
-            The file's place cannot be found.
-        """
-        layer = Layer(first, per_degree=first.crs.is_geographic)
-        if layer.per_degree and first.transform.b == first.transform.d == 0.0:
-            turn = 360.0 / abs(first.transform.a)
-            layer.turn = round(turn) if abs(turn - round(turn)) < SAME_GRID_CELLS else 0
-        layer.members.append((first, 0, 0))
-        u, v = (first.width - 1) / 2.0, (first.height - 1) / 2.0
-        try:
-            lon, lat = layer.to_lonlat(np.array([u, u + 1.0, u]), np.array([v, v, v + 1.0]))
-        except ProjError:
-            lon = lat = np.full(3, np.nan)
-        if not (np.isfinite(lon).all() and np.isfinite(lat).all() and abs(lat).max() <= 90.0):
-            raise refusal(first.path, "lies outside its own coordinate system")
-        _, _, spacing_m = _GEOD.inv(lon[[0, 0]], lat[[0, 0]], lon[1:], lat[1:])
-        layer.cell_m = math.sqrt(float(spacing_m[0]) * float(spacing_m[1]))
-        layer.centre_lon_deg, layer.centre_lat_deg = float(lon[0]), float(lat[0])
-        return layer
-
-    def takes(self, file: RasterFile) -> bool:
-        """Add a file if its posts fall on those of the layer; tell whether they did."""
-        mine, its = self.first.transform, file.transform
-        longest = max(file.width, file.height, self.first.width, self.first.height)
-        spacing = max(abs(getattr(mine, term)) for term in "abde")
-        drift = max(abs(getattr(mine, term) - getattr(its, term)) for term in "abde")
-        if drift * longest > SAME_GRID_CELLS * spacing or self.first.crs != file.crs:
-            return False
-        col, row = ~mine * (its.c, its.f)
-        if max(abs(col - round(col)), abs(row - round(row))) > SAME_GRID_CELLS:
-            return False
-        self.members.append((file, round(row), round(col)))
-        return True
-
-    def to_posts(
-        self, lon_deg: Values, lat_deg: Values, lon_ref_deg: float
-    ) -> tuple[Values, Values]:
-        """Return post coordinates u (column), v (row) of places, continuous round `lon_ref_deg`."""
-        if self.per_degree:
-            ref = self.centre_lon_deg + _half_turn(lon_ref_deg - self.centre_lon_deg)
-            lon_deg = ref + _half_turn(lon_deg - lon_ref_deg)
-        pair = transformers(self.first.crs)
-        x, y = (lon_deg, lat_deg) if pair is None else pair[0].transform(lon_deg, lat_deg)
-        if pair is not None and self.per_degree:
-            x = lon_deg + _half_turn(np.asarray(x) - lon_deg)
-        inverse = ~self.first.transform
-        u = inverse.a * x + inverse.b * y + (inverse.c - 0.5)
-        v = inverse.d * x + inverse.e * y + (inverse.f - 0.5)
-        return np.asarray(u), np.asarray(v)
-
-    def to_lonlat(self, u: Values, v: Values) -> tuple[Values, Values]:
-        """Return longitude and latitude [deg] of post coordinates; longitude may pass 180."""
-        grid = self.first.transform
-        x = grid.a * (u + 0.5) + grid.b * (v + 0.5) + grid.c
-        y = grid.d * (u + 0.5) + grid.e * (v + 0.5) + grid.f
-        pair = transformers(self.first.crs)
-        lon, lat = (x, y) if pair is None else pair[1].transform(x, y)
-        return np.asarray(lon), np.asarray(lat)
-
-    def near(self, lon_deg: Values, lat_deg: Values) -> bool:
-        """Tell whether any member may meet the rectangle that holds the places."""
-        lon = lon_deg[0, 0] + _half_turn(lon_deg - lon_deg[0, 0])
-        middle, half = (lon.min() + lon.max()) / 2.0, (lon.max() - lon.min()) / 2.0
-        if not np.isfinite(half):
-            return True
-        for west, south, east, north in self.bboxes:
-            wide = ((east - west) % 360.0) / 2.0
-            apart = abs(float(_half_turn(west + wide - middle)))
-            if apart <= wide + half + 0.02 and south - 0.02 <= lat_deg.max():
-                if lat_deg.min() <= north + 0.02:
-                    return True
-        return False
-
-    def placed(self, box: tuple[int, int, int, int]) -> list[tuple[RasterFile, int, int]]:
-        """Return the members that meet a window of posts, where they lie nearest to it.
-
-        Parameters
-        ----------
-        box
-            ``(j0, j1, i0, i1)``, ends exclusive.
-        """
-        j0, j1, i0, i1 = box
-        found = []
-        for file, row, col in self.members:
-            turns = [0]
-            if self.turn:
-                nearest = round(((i0 + i1) / 2 - col - file.width / 2) / self.turn)
-                turns = [nearest - 1, nearest, nearest + 1]
-            for k in turns:
-                left = col + k * self.turn
-                if row < j1 and row + file.height > j0 and left < i1 and left + file.width > i0:
-                    found.append((file, row, left))
-        return found
-
-    def read(self, box: tuple[int, int, int, int]) -> Posts:
-        """Return heights [m] of a window of posts, NaN where there are none.
-
-        Parameters
-        ----------
-        box
-            ``(j0, j1, i0, i1)``, ends exclusive.
-
-        Raises
-        ------
-        TerrainError
-            A file is cut short or damaged.
-        """
-        j0, j1, i0, i1 = box
-        out = np.full((j1 - j0, i1 - i0), np.nan, dtype=np.float32)
-        for file, row, col in self.placed(box):
-            r0, r1 = max(j0, row), min(j1, row + file.height)
-            c0, c1 = max(i0, col), min(i1, col + file.width)
-            heights = read_heights(file, (r0 - row, r1 - row, c0 - col, c1 - col))
-            part = out[r0 - j0 : r1 - j0, c0 - i0 : c1 - i0]
-            np.copyto(part, heights, where=np.isnan(part))
-        return out
-
-    def heights_m(self, lon_deg: Values, lat_deg: Values) -> Values:
-        """Return bilinear heights [m] at places, shape ``(k,)``, NaN where void or off the layer."""
-        out = np.full(lon_deg.size, np.nan)
-        u, v = self.to_posts(lon_deg, lat_deg, float(lon_deg[0]))
-        good = np.flatnonzero(np.isfinite(u) & np.isfinite(v))
-        rows = np.floor(v[good] / CHUNK_POSTS).astype(np.int64)
-        cols = np.floor(u[good] / CHUNK_POSTS).astype(np.int64)
-        order = np.lexsort((cols, rows))
-        turns = np.flatnonzero(np.diff(rows[order]) | np.diff(cols[order])) + 1
-        for part in np.split(order, turns) if order.size else []:
-            row, col = int(rows[part[0]]), int(cols[part[0]])
-            posts = self._chunk(row, col)
-            if posts is None:
-                continue
-            here = good[part]
-            heights = np.full(here.size, np.nan)
-            kernels.sample(posts, u[here] - col * CHUNK_POSTS, v[here] - row * CHUNK_POSTS, heights)
-            out[here] = heights
-        return out
-
-    def _chunk(self, row: int, col: int) -> Posts | None:
-        """Return a square of posts with one more row and column, None off the layer."""
-        key = (row, col)
-        with self.lock:
-            if key in self.chunks:
-                self.chunks.move_to_end(key)
-                return self.chunks[key]
-        j, i = row * CHUNK_POSTS, col * CHUNK_POSTS
-        box = (j, j + CHUNK_POSTS + 1, i, i + CHUNK_POSTS + 1)
-        posts = self.read(box) if self.placed(box) else None
-        with self.lock:
-            self.chunks[key] = posts
-            while len(self.chunks) > CHUNKS_KEPT:
-                self.chunks.popitem(last=False)
-        return posts
-
-    def describe(self, file: RasterFile) -> TerrainSource:
-        """Return what to show of a member."""
-        _, row, col = next(member for member in self.members if member[0] is file)
-        edge = np.linspace(0.0, 1.0, 33)
-        u = col + (file.width - 1) * np.concatenate([edge, edge, 0 * edge, 0 * edge + 1])
-        v = row + (file.height - 1) * np.concatenate([0 * edge, 0 * edge + 1, edge, edge])
-        lon, lat = self.to_lonlat(u, v)
-        lon = lon[0] + _half_turn(lon - lon[0])
-        west, east = float(_half_turn(lon.min())), -float(_half_turn(-lon.max()))
-        tags = file.tags
-        return TerrainSource(
-            file=file.path.name,
-            bbox=(west, float(lat.min()), east, float(lat.max())),
-            cell_m=self.cell_m,
-            source=tags.get("SOURCE") or tags.get("TIFFTAG_IMAGEDESCRIPTION") or NOT_STATED,
-            date=tags.get("DATE") or tags.get("TIFFTAG_DATETIME") or NOT_STATED,
-            vertical_datum=file.vertical_datum,
-            vertical_unit=file.vertical_unit,
-        )
-
-
 def read_heights(file: RasterFile, window: tuple[int, int, int, int]) -> Posts:
     """Return heights [m] of a window ``(row0, row1, column0, column1)`` of a file, NaN for voids.
 
@@ -368,29 +141,24 @@ def read_heights(file: RasterFile, window: tuple[int, int, int, int]) -> Posts:
     """
     with open_raster(file.path) as data:
         raw = read_window(data, file.path, window)
-    heights = np.asarray(raw.data, dtype=np.float32)
-    if (file.scale_m, file.offset_m) != (1.0, 0.0):
-        heights = (raw.data * file.scale_m + file.offset_m).astype(np.float32)
+    values: NDArray[Any] = np.ma.getdata(raw)
+    if (file.scale_m, file.offset_m) == (1.0, 0.0):
+        heights = values.astype(np.float32)
+    else:
+        heights = (values * file.scale_m + file.offset_m).astype(np.float32)
     heights[np.ma.getmaskarray(raw) | ~((heights >= LOWEST_M) & (heights <= HIGHEST_M))] = np.nan
     return heights
 
 
-def group(files: list[RasterFile]) -> tuple[list[Layer], list[TerrainError]]:
-    """Return the layers of files, the finest first, and the refusals of files without a place."""
-    layers: list[Layer] = []
-    refused = []
-    for file in files:
-        if any(layer.takes(file) for layer in layers):
-            continue
-        try:
-            layers.append(Layer.of(file))
-        except TerrainError as error:
-            refused.append(error)
-    for layer in layers:
-        layer.bboxes = [layer.describe(file).bbox for file, _, _ in layer.members]
-    return sorted(layers, key=lambda layer: layer.cell_m), refused
-
-
-def _half_turn(angle_deg: Values | float) -> Values:
-    """Return an angle in -180 .. 180 (exclusive) degrees."""
-    return np.asarray((np.asarray(angle_deg) + 180.0) % 360.0 - 180.0)
+def known_bbox(path: Path) -> Bbox | None:
+    """Return where a refused file lies, None if that cannot be told."""
+    if path.suffix.lower() not in DRIVERS:
+        return None
+    try:
+        with open_unchecked(path) as data:
+            if data.crs is None or data.transform.is_identity:
+                return None
+            west, south, east, north = transform_bounds(data.crs, "EPSG:4326", *data.bounds)
+    except (RasterioError, OSError, ValueError):
+        return None
+    return float(west), float(south), float(east), float(north)

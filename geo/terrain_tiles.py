@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from geo import terrain_kernels as kernels
 from geo.frame import Frame
-from geo.terrain_source import Layer
+from geo.terrain_layer import Box, Layer
 
 TILE_CELLS = 256
 CACHE_BYTES = 256 * 2**20
@@ -21,7 +21,7 @@ LATTICE_M = 512.0  # exact projection at least this often; between, 2 cm are los
 POSTS_AT_ONCE = 8_000_000
 
 Tops = NDArray[np.float64]
-Box = tuple[int, int, int, int]
+Cells = NDArray[np.float32]
 TileKey = tuple[Frame, float, int, int]  # frame, cell side [m], tile row, tile column
 
 
@@ -29,7 +29,7 @@ TileKey = tuple[Frame, float, int, int]  # frame, cell side [m], tile row, tile 
 class Tile:
     """Cells of one tile: `top_m` float32 ``(256, 256)`` read-only, and the layers that gave it."""
 
-    top_m: NDArray[np.float32]
+    top_m: Cells
     layers: frozenset[int]
 
 
@@ -63,7 +63,7 @@ class CellBlock:
         self.lon_deg, self.lat_deg = frame.to_lonlat(*np.meshgrid(x_m, y_m))
         self.lon_ref_deg = float(self.lon_deg[0, 0])
 
-    def composite(self, layers: list[Layer]) -> tuple[Tops, frozenset[int]]:
+    def composite(self, layers: list[Layer]) -> tuple[Cells, frozenset[int]]:
         """Return the top of each cell [m], NaN where void, and the layers that gave something.
 
         The finest source that covers a cell whole gives its top, together with any finer one
@@ -88,8 +88,7 @@ class CellBlock:
                 used.add(index)
             if done.all():
                 break
-        out[done == 0] = np.nan
-        return out, frozenset(used)
+        return kernels.finish(out, done), frozenset(used)
 
     def _tops(self, layer: Layer, u: Tops, v: Tops, box: Box) -> tuple[Tops, NDArray[np.uint8]]:
         """Return one layer's highest point in each cell, and 1 where part of the cell is void."""
@@ -112,9 +111,9 @@ class CellBlock:
         )
         return top, void
 
-    def _by_quarters(self, layers: list[Layer]) -> tuple[Tops, frozenset[int]]:
+    def _by_quarters(self, layers: list[Layer]) -> tuple[Cells, frozenset[int]]:
         """Return `composite`, put together from halves of the sides."""
-        out = np.empty((self.n_rows, self.n_cols))
+        out = np.empty((self.n_rows, self.n_cols), dtype=np.float32)
         used: frozenset[int] = frozenset()
         for rows in _halves(self.n_rows, self.step):
             for cols in _halves(self.n_cols, self.step):
@@ -160,13 +159,6 @@ def _post_box(layer: Layer, u: Tops, v: Tops) -> Box | None:
     return j0, j1, i0, i1
 
 
-def block_tops(
-    layers: list[Layer], frame: Frame, cell_m: float, row0: int, col0: int, n_rows: int, n_cols: int
-) -> tuple[Tops, frozenset[int]]:
-    """Return `CellBlock.composite` of a rectangle of cells."""
-    return CellBlock(frame, cell_m, row0, col0, n_rows, n_cols).composite(layers)
-
-
 class TileCache:
     """Tiles by key, the least recently used dropped first; each built once at a time.
 
@@ -197,7 +189,8 @@ class TileCache:
 
     def get(self, keys: Iterable[TileKey]) -> dict[TileKey, Tile]:
         """Return the tiles, building those that are missing; waits for those being built."""
-        wanted, found = list(keys), {}
+        wanted = list(keys)
+        found: dict[TileKey, Tile] = {}
         while len(found) < len(wanted):
             mine, waiting = self._claim(wanted, found)
             if mine:
