@@ -23,7 +23,7 @@ Array = NDArray[np.float64]
 SLOWEST_MPS = 1.0  # a track with less ground speed than this is not held [m/s]
 LEAST_SHEAR_ROOM = 0.05  # below this share of the drag left for the descent the charge diverges [-]
 SLOWEST_STALL_FACTOR = 1.2  # the wind policy stays above this multiple of the stall speed [-]
-N_SPEEDS = 9  # speeds tried by the wind policy before it refines
+N_SPEEDS = 12  # speeds tried by the wind policy before it refines
 
 
 @dataclass(frozen=True)
