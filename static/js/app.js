@@ -4,6 +4,7 @@ import { byId } from "./dom.js";
 import { Page } from "./page.js";
 import { ServiceError, silence } from "./problem.js";
 import { ask } from "./service.js";
+import { startState } from "./state.js";
 import * as status from "./status.js";
 
 /** @param {any} catalog */
@@ -22,9 +23,9 @@ function watchHand() {
 
 watchHand();
 try {
-  const catalog = await ask("/api/catalog");
+  const [catalog, start] = await Promise.all([ask("/api/catalog"), ask("/api/start")]);
   credit(catalog);
-  new Page(catalog).start();
+  new Page(catalog, startState(start)).start();
 } catch (error) {
   status.headline("The page cannot start.");
   status.showFault(error instanceof ServiceError ? error.fault : silence(), () => location.reload());

@@ -1,8 +1,8 @@
 /** The map: relief, outlines, landing sites, the path to a place. */
 
-import { el, sign } from "./dom.js";
-import { featureOf, line, outside, polygons, signPlace, siteLines } from "./geometry.js";
-import { layLabels } from "./labels.js";
+import { el } from "./dom.js";
+import { featureOf, line, outside, polygons } from "./geometry.js";
+import { SiteSigns } from "./signs.js";
 
 const L = /** @type {any} */ (globalThis).L;
 const PANES = /** @type {const} */ ([
@@ -28,10 +28,7 @@ export class Chart {
     relief(catalog.terrain).addTo(this.map);
     this.answer = L.layerGroup().addTo(this.map);
     this.way = L.layerGroup().addTo(this.map);
-    this.runways = L.layerGroup().addTo(this.map);
-    /** @type {Map<string, HTMLElement>} */
-    this.signs = new Map();
-    this.sites(catalog.sites);
+    this.signs = new SiteSigns(this.map, catalog.sites, this.renderers.outline);
     this.map.on("click", (/** @type {any} */ event) => {
       const { lat, lng } = event.latlng.wrap();
       onAsk(lat, lng);
@@ -82,49 +79,21 @@ export class Chart {
     return { latitude: lat, longitude: lng, zoom: this.map.getZoom() };
   }
 
+  /**
+   * @param {HTMLElement} nearer
+   * @param {HTMLElement} wider
+   * @param {HTMLElement} whole
+   */
+  tools(nearer, wider, whole) {
+    nearer.addEventListener("click", () => this.map.zoomIn());
+    wider.addEventListener("click", () => this.map.zoomOut());
+    whole.addEventListener("click", () => this.show(null));
+    new ResizeObserver(() => this.resized()).observe(this.map.getContainer());
+  }
+
   /** Its box has another size. */
   resized() {
     this.map.invalidateSize({ pan: false });
-  }
-
-  /** @param {any} collection landing sites */
-  sites(collection) {
-    const named = new Set();
-    for (const { geometry, properties } of collection.features) {
-      const at = signPlace(geometry);
-      if (!at) continue;
-      for (const track of siteLines(geometry)) {
-        L.polyline(track, this.style("outline", "runway-case")).addTo(this.runways);
-        L.polyline(track, this.style("outline", "runway")).addTo(this.runways);
-      }
-      const name = named.has(properties.name) ? "" : String(properties.name ?? "");
-      named.add(properties.name);
-      const inner = el("div", { class: `site ${properties.kind}` },
-        sign(`${signName(properties.kind)}-out`, "sign"), name ? el("span", { class: "label" }, name) : null);
-      const icon = L.divIcon({ className: "site-icon", html: inner, iconSize: [0, 0] });
-      L.marker(at, { icon, pane: "sites", interactive: false, keyboard: false }).addTo(this.map);
-      this.signs.set(String(properties.id), inner);
-    }
-    this.map.on("zoomend moveend resize", () => this.lay());
-    this.lay();
-  }
-
-  /** Lay the names anew, once the map stands still. */
-  lay() {
-    clearTimeout(this.laying);
-    this.laying = setTimeout(() => layLabels([...this.signs.values()], this.map.getContainer()), 60);
-  }
-
-  /** @param {{id: string, in_range: boolean}[]} reach sites of the last answer */
-  mark(reach) {
-    const within = new Set(reach.filter((site) => site.in_range).map((site) => String(site.id)));
-    for (const [id, node] of this.signs) {
-      const kind = signName(node.classList[1]);
-      node.classList.toggle("within", within.has(id));
-      node.querySelector("use")?.setAttribute(
-        "href", `/static/icons/signs.svg#${kind}-${within.has(id) ? "in" : "out"}`);
-    }
-    this.lay();
   }
 
   /** @param {any} section answer of `POST /api/section`, or null for none */
@@ -152,11 +121,6 @@ export class Chart {
     const radius = className.startsWith("target") ? 8 : 5;
     L.circleMarker(line([position])[0], { ...this.style("way", className), radius }).addTo(this.way);
   }
-}
-
-/** @param {string} kind of a site */
-function signName(kind) {
-  return ["aerodrome", "strip", "field", "water"].includes(kind) ? kind : "field";
 }
 
 /**

@@ -7,6 +7,7 @@ import { readWinds, showWinds } from "./winds.js";
 
 /** @typedef {import("./state.js").State} State */
 
+const WIND_LEVELS_MAX = 50; // of the service
 const NUMBERS = ["latitude_deg", "longitude_deg", "altitude_ft", "isa_offset_c", "qnh_hpa"];
 
 export class Form {
@@ -60,7 +61,7 @@ export class Form {
     for (const name of NUMBERS) this.input(name).value = state[/** @type {"qnh_hpa"} */ (name)];
     this.showTrack(state.track_deg);
     showWinds(this.winds, state.wind, () => this.tell());
-    byId("more-wind").hidden = state.wind.length >= 3;
+    byId("more-wind").hidden = state.wind.length >= WIND_LEVELS_MAX;
     for (const { key } of MARGINS) this.input(key).value = state.margins[key] ?? "";
   }
 
@@ -185,9 +186,7 @@ function isNumber(field) {
 }
 
 /** @param {HTMLSelectElement} select */
-function chosenWord(select) {
-  return select.selectedIndex > 0 ? select.value : null;
-}
+const chosenWord = (select) => (select.selectedIndex > 0 ? select.value : null);
 
 /**
  * @param {HTMLSelectElement} select

@@ -14,24 +14,25 @@ import { pullable } from "./pull.js";
 import { LatestQueue } from "./queue.js";
 import { footprintRequest } from "./request.js";
 import { ask } from "./service.js";
-import { defaultState, fromAddress, toAddress } from "./state.js";
+import { fromAddress, toAddress } from "./state.js";
 import * as status from "./status.js";
 
-/** @typedef {import("./state.js").State} State */
-/** @typedef {{state: State, detail: "fine" | "coarse"}} Job */
+/** @typedef {import("./state.js").State} State @typedef {{state: State, detail: "fine" | "coarse"}} Job */
 
 export class Page {
-  /** @param {any} catalog */
-  constructor(catalog) {
+  /**
+   * @param {any} catalog
+   * @param {State} first what the page shows where the address says nothing
+   */
+  constructor(catalog, first) {
     this.catalog = catalog;
-    /** @type {State} */
-    this.state = fromAddress(location.hash, defaultState(catalog));
+    this.first = first;
+    this.state = fromAddress(location.hash, first);
     /** @type {any} */
     this.answer = null;
-    this.fitted = false;
     const { latitude_deg: latitude, longitude_deg: longitude } = this.state;
     this.chart = new Chart(byId("map"), catalog, (north, east) => this.askAbout([east, north]));
-    this.chart.show(this.state.view ?? { latitude, longitude, zoom: 9 });
+    this.chart.show(this.state.view ?? { latitude, longitude, zoom: 10.5 });
     drawNeatline(this.chart.map, /** @type {any} */ (byId("frame")));
     this.aeroplane = new Aeroplane(this.chart.map, {
       onMove: (latitude_deg, longitude_deg, done) => this.moved({ latitude_deg, longitude_deg }, done),
@@ -49,10 +50,7 @@ export class Page {
 
   listen() {
     byId("stop").addEventListener("click", () => this.stop());
-    byId("nearer").addEventListener("click", () => this.chart.map.zoomIn());
-    byId("wider").addEventListener("click", () => this.chart.map.zoomOut());
-    byId("whole").addEventListener("click", () => this.chart.show(null));
-    new ResizeObserver(() => this.chart.resized()).observe(byId("map"));
+    this.chart.tools(byId("nearer"), byId("wider"), byId("whole"));
     this.chart.map.on("moveend", () => this.note());
     window.addEventListener("hashchange", () => this.restore());
   }
@@ -66,7 +64,7 @@ export class Page {
   /** The address was changed by hand or by the back key. */
   restore() {
     if (location.hash.slice(1) === toAddress(this.state)) return;
-    this.state = fromAddress(location.hash, defaultState(this.catalog));
+    this.state = fromAddress(location.hash, this.first);
     if (this.state.view) this.chart.show(this.state.view);
     if (!this.state.to) this.asked.clear();
     this.start();
@@ -106,8 +104,7 @@ export class Page {
   }
 
   /**
-   * While moving, one coarse request at a time follows the newest place; the fine one on release
-   * stops it, so that nothing older than the hand is drawn.
+   * While moving, one coarse request at a time follows the hand; the fine one on release stops it.
    *
    * @param {"fine" | "coarse"} detail
    */
@@ -150,18 +147,14 @@ export class Page {
   /** @param {any} answer or null for none */
   draw(answer) {
     this.answer = answer;
-    const chart = byId("chart");
-    chart.classList.remove("stale");
-    chart.dataset.detail = answer?.detail ?? "none";
+    byId("chart").classList.remove("stale");
+    byId("chart").dataset.detail = answer?.detail ?? "none";
     this.chart.draw(answer);
-    this.chart.mark(answer?.sites ?? []);
+    this.chart.signs.mark(answer?.sites ?? []);
     status.showCoarse(answer);
     for (const id of ["numbers", "sites", "basis"]) byId(id).hidden = answer === null;
     this.bolden();
-    if (!answer) {
-      this.asked.clear();
-      return;
-    }
+    if (!answer) return this.asked.clear();
     status.showHeadline(answer);
     showFigures(byId("figures"), answer);
     showRanges(byId("ranges"), answer);
@@ -173,7 +166,7 @@ export class Page {
   /** Margins less safe than default: the fields at once, the sentences with the answer. */
   bolden() {
     this.form.showBold(this.state, lessSafe(this.state.margins, this.catalog.margins, this.answer));
-    status.showBolds(this.answer?.margins_below_default ?? []);
+    status.showBolds(this.answer);
   }
 
   /** @param {unknown} error there is no footprint for this state */

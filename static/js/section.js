@@ -1,12 +1,12 @@
 /** The place asked about: why it is in or out of range, and the terrain section to it. */
 
 import { el, leaderRow, svg } from "./dom.js";
-import { bearing, feet, nauticalMiles, number, place, surplus } from "./format.js";
+import { bearing, feet, nauticalMiles, number, place } from "./format.js";
 import { plot } from "./profile.js";
 
-const WIDTH = 420;
-const HEIGHT = 200;
-const FRAME = { left: 52, right: WIDTH - 12, top: 26, bottom: HEIGHT - 34 };
+const WIDTH = 360;
+const HEIGHT = 190;
+const FRAME = { left: 46, right: WIDTH - 12, top: 26, bottom: HEIGHT - 34 };
 
 /**
  * @param {HTMLElement} box
@@ -18,14 +18,11 @@ export function showSection(box, section, name, onClose) {
   const { reason, within_range: within, by } = section;
   const close = el("button", { type: "button", class: "quiet" }, "Put away");
   close.addEventListener("click", onClose);
-  const verdict = within
-    ? `Within modelled gliding range, ${surplus(section.surplus_ft)}`
-    : "Out of modelled range";
   const bent = by === "bent" && section.path_profile;
   box.replaceChildren(
     el("h2", {}, name ?? place(section.to[1], section.to[0])),
-    el("p", { class: "verdict" }, verdict),
-    el("p", { class: "reason" }, String(reason.text)),
+    el("p", { class: "verdict" }, within ? String(reason.text) : "Out of modelled range"),
+    within ? "" : el("p", { class: "reason" }, String(reason.text)),
     drawing(bent ? section.path_profile : section.profile, within ? null : reason.ridge,
       bent ? "Section along the path" : "Section along the straight line"),
     el("dl", { class: "leaders" }, ...rows(section)),

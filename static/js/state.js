@@ -34,41 +34,29 @@ const WORDS = /** @type {const} */ ([
 ]);
 
 /**
- * The state that the page starts with, from what the service holds.
+ * The state that the page starts with: the request that the service starts with, defaults filled.
  *
- * @param {any} catalog
+ * @param {any} start a footprint request
  * @returns {State}
  */
-export function defaultState(catalog) {
-  const [longitude, latitude] = startPlace(catalog);
+export function startState(start) {
   return {
-    latitude_deg: latitude,
-    longitude_deg: longitude,
-    altitude_ft: 6500,
-    track_deg: 90,
-    aircraft: catalog.aircraft[0]?.id ?? "",
-    mass_kg: null,
-    propeller: null,
-    configuration: null,
-    speed_policy: "manual",
-    wind: [{ altitude_ft: 3000, from_deg: 270, speed_kt: 12 }],
-    isa_offset_c: 0,
-    qnh_hpa: 1013.25,
-    margins: {},
+    latitude_deg: start.position[1],
+    longitude_deg: start.position[0],
+    altitude_ft: start.altitude_ft,
+    track_deg: start.track_deg ?? null,
+    aircraft: String(start.aircraft),
+    mass_kg: start.mass_kg ?? null,
+    propeller: start.propeller ?? null,
+    configuration: start.configuration ?? null,
+    speed_policy: start.speed_policy ?? "manual",
+    wind: start.wind ?? [],
+    isa_offset_c: start.isa_offset_c ?? 0,
+    qnh_hpa: start.qnh_hpa ?? 1013.25,
+    margins: start.margins ?? {},
     to: null,
     view: null,
   };
-}
-
-/**
- * The middle of the first terrain file: the only place known to have ground under it.
- *
- * @param {any} catalog
- * @returns {[number, number]} longitude, latitude
- */
-function startPlace(catalog) {
-  const [west, south, east, north] = catalog.terrain[0]?.bbox ?? [0, 0, 0, 0];
-  return [round((west + east) / 2), round((south + north) / 2)];
 }
 
 /** @param {number} value */
@@ -111,7 +99,7 @@ function levelText(level) {
  */
 export function fromAddress(text, base) {
   const query = new URLSearchParams(text.replace(/^#/, ""));
-  const state = { ...base, margins: {}, wind: base.wind.map((level) => ({ ...level })) };
+  const state = { ...base, margins: query.size ? {} : base.margins, wind: base.wind.map((level) => ({ ...level })) };
   for (const [name, key] of NUMBERS) {
     const value = finite(query.get(name));
     if (value !== null) state[key] = value;

@@ -65,8 +65,9 @@ export function showCoarse(answer) {
   if (coarse) slip.textContent = `Coarse outline while moving, ${metres(answer.cell_m)} cells`;
 }
 
-/** @param {string[]} sentences margins less safe than their default */
-export function showBolds(sentences) {
+/** @param {any} answer whose margins may be less safe than their default, or null */
+export function showBolds(answer) {
+  const sentences = answer?.margins_below_default ?? [];
   const line = byId("bolds");
   line.hidden = sentences.length === 0;
   line.replaceChildren(el("strong", {}, sentences.join(" ")));
