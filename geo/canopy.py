@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from geo import terrain_kernels as kernels
 from geo.case import FT_M
 from geo.raster_guard import CLASS_TYPES, open_raster, read_window, refusal
-from geo.terrain_layer import Box, Layer
+from geo.terrain_layer import SQUARE, Box, Layer, Squares, by_square
 from geo.terrain_source import NOT_STATED, read_header
 from perf.errors import TerrainError
 
@@ -36,7 +36,7 @@ class CoverClass:
     canopy_m: float
 
 
-@dataclass(frozen=True)
+@dataclass
 class LandCover:
     """A land-cover raster with its legend."""
 
@@ -44,6 +44,10 @@ class LandCover:
     legend: dict[int, CoverClass]
     source: str
     date: str
+    squares: Squares = field(init=False, compare=False)
+
+    def __post_init__(self) -> None:
+        self.squares = Squares(lambda box: self.codes(box) if self.layer.placed(box) else None)
 
     @staticmethod
     def load(path: Path) -> LandCover:
@@ -114,19 +118,13 @@ class LandCover:
         if lon_deg.size == 0 or not self.layer.near(lon_deg, lat_deg):
             return out
         u, v = self.layer.to_posts(lon_deg, lat_deg, float(lon_deg[0]))
-        good = np.flatnonzero(np.isfinite(u) & np.isfinite(v))
-        i, j = np.floor(u[good] + 0.5).astype(np.int64), np.floor(v[good] + 0.5).astype(np.int64)
-        square = 512
-        order = np.lexsort((i // square, j // square))
-        cuts = np.flatnonzero(np.diff(j[order] // square) | np.diff(i[order] // square)) + 1
-        for part in np.split(order, cuts) if order.size else []:
-            box = (
-                int(j[part].min()),
-                int(j[part].max()) + 1,
-                int(i[part].min()),
-                int(i[part].max()) + 1,
-            )
-            out[good[part]] = self.codes(box)[j[part] - box[0], i[part] - box[2]]
+        u, v = u + 0.5, v + 0.5
+        for row, col, here in by_square(u, v):
+            codes = self.squares.get(row, col)
+            if codes is not None:
+                j = np.floor(v[here]).astype(np.int64) - row * SQUARE
+                i = np.floor(u[here]).astype(np.int64) - col * SQUARE
+                out[here] = codes[j, i]
         return out
 
     def name_of(self, code: int) -> str:

@@ -124,16 +124,13 @@ class ObstacleField:
         """
         if lon_deg.size == 0:
             return
+        frame = frame_for(float(lon_deg[0]), float(lat_deg[0]))
+        x_m, y_m = frame.to_xy_m(lon_deg, lat_deg)
         for index in self._near(lon_deg, lat_deg, POINT_REACH_M):
             points = self._points_of(index)
             reach_m = self.obstacles[index].horizontal_m + POINT_REACH_M
-            frame = frame_for(float(points.lon_deg[0]), float(points.lat_deg[0]))
-            x_m, y_m = frame.to_xy_m(lon_deg, lat_deg)
-            for px, py, top in zip(
-                *frame.to_xy_m(points.lon_deg, points.lat_deg), points.reach_m, strict=True
-            ):
-                near = np.hypot(x_m - px, y_m - py) <= reach_m
-                height_m[near] = np.where(top > height_m[near], top, height_m[near])
+            point_x_m, point_y_m = frame.to_xy_m(points.lon_deg, points.lat_deg)
+            kernels.raise_places(height_m, x_m, y_m, point_x_m, point_y_m, reach_m, points.reach_m)
 
     def _near(self, lon_deg: Values, lat_deg: Values, more_m: float) -> list[int]:
         """Return the obstacles whose reach may meet the rectangle round the places."""

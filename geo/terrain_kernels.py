@@ -322,6 +322,39 @@ def raise_discs(top: Posts, x: Values, y: Values, radius: Values, height_m: Valu
                     top[row, col] = height_m[k]
 
 
+@njit(nogil=True, cache=True, error_model="numpy")
+def raise_places(
+    height_m: Values,
+    x: Values,
+    y: Values,
+    point_x: Values,
+    point_y: Values,
+    reach: float,
+    top: Values,
+) -> None:
+    """Raise every place within reach of a point to the point's height.
+
+    Parameters
+    ----------
+    height_m
+        Heights of the places [m], shape ``(n,)``, changed in place.
+    x, y
+        Places [m], shape ``(n,)``.
+    point_x, point_y, top
+        Points and their heights [m], shape ``(k,)``; NaN raises nothing.
+    reach
+        Reach of every point [m].
+    """
+    west, east = point_x.min() - reach, point_x.max() + reach
+    south, north = point_y.min() - reach, point_y.max() + reach
+    for n in range(x.size):
+        if not (west <= x[n] <= east and south <= y[n] <= north):
+            continue
+        for k in range(point_x.size):
+            if top[k] > height_m[n] and math.hypot(x[n] - point_x[k], y[n] - point_y[k]) <= reach:
+                height_m[n] = top[k]
+
+
 def warm_up_terrain() -> None:
     """Compile every kernel of this file (or load it from the cache) on a tiny input."""
     posts = np.zeros((3, 3), dtype=np.float32)
@@ -332,5 +365,7 @@ def warm_up_terrain() -> None:
     merge(top, void, np.full((2, 2), NO_TOP), np.zeros((2, 2), dtype=np.uint8))
     cells = finish(top, void)
     touched(posts, lattice, lattice, 2, cells)
+    one = np.zeros(1)
+    raise_places(one, one, one, one, one, 1.0, one)
     raise_discs(cells, np.zeros(1), np.zeros(1), np.ones(1), np.zeros(1))
     sample(posts, np.zeros(1), np.zeros(1), np.full(1, np.nan))

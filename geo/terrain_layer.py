@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 import threading
 from collections import OrderedDict
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -23,8 +24,8 @@ Posts = NDArray[np.float32]
 Box = tuple[int, int, int, int]
 
 SAME_GRID_CELLS = 0.01  # files whose posts agree this well share a grid
-CHUNK_POSTS = 256  # side of the squares of posts that single heights are read from
-CHUNKS_KEPT = 256  # of each layer, 64 MB
+SQUARE = 256  # side of the squares of posts that single places are read from
+SQUARES_KEPT = 128  # of each layer, 32 MB
 
 _GEOD = Geod(ellps="WGS84")
 _LOCAL = threading.local()  # Transformer objects must not be shared between threads
@@ -45,6 +46,55 @@ def transformers(crs: CRS) -> tuple[Any, Any] | None:
             )
     pair: tuple[Any, Any] | None = held[key]
     return pair
+
+
+class Squares:
+    """Squares of a raster with one more row and column, the least recently used dropped first.
+
+    Parameters
+    ----------
+    read
+        Returns the numbers of a window ``(j0, j1, i0, i1)``, None off the raster.
+    """
+
+    def __init__(self, read: Callable[[Box], NDArray[Any] | None]) -> None:
+        self._read = read
+        self._kept: OrderedDict[tuple[int, int], NDArray[Any] | None] = OrderedDict()
+        self._lock = threading.Lock()
+
+    def get(self, row: int, col: int) -> NDArray[Any] | None:
+        """Return the square that starts at post (row * SQUARE, col * SQUARE)."""
+        key = (row, col)
+        with self._lock:
+            if key in self._kept:
+                self._kept.move_to_end(key)
+                return self._kept[key]
+        j, i = row * SQUARE, col * SQUARE
+        numbers = self._read((j, j + SQUARE + 1, i, i + SQUARE + 1))
+        with self._lock:
+            self._kept[key] = numbers
+            while len(self._kept) > SQUARES_KEPT:
+                self._kept.popitem(last=False)
+        return numbers
+
+
+def by_square(u: Values, v: Values) -> Iterator[tuple[int, int, NDArray[np.int64]]]:
+    """Yield row and column of each square that holds places, with the indices of the places.
+
+    Parameters
+    ----------
+    u, v
+        Post coordinates, shape ``(k,)``; those that are not finite belong to no square.
+    """
+    good = np.flatnonzero(np.isfinite(u) & np.isfinite(v))
+    if good.size == 0:
+        return
+    rows = np.floor(v[good] / SQUARE).astype(np.int64)
+    cols = np.floor(u[good] / SQUARE).astype(np.int64)
+    order = np.lexsort((cols, rows))
+    turns = np.flatnonzero(np.diff(rows[order]) | np.diff(cols[order])) + 1
+    for part in np.split(order, turns):
+        yield int(rows[part[0]]), int(cols[part[0]]), good[part]
 
 
 @dataclass
@@ -69,8 +119,9 @@ class Layer:
     centre_lat_deg: float = 0.0
     per_degree: bool = False
     bboxes: list[Bbox] = field(default_factory=list)
-    chunks: OrderedDict[tuple[int, int], Posts | None] = field(default_factory=OrderedDict)
-    lock: threading.Lock = field(default_factory=threading.Lock)
+
+    def __post_init__(self) -> None:
+        self.squares = Squares(lambda box: self.read(box) if self.placed(box) else None)
 
     @staticmethod
     def of(first: RasterFile) -> Layer:
@@ -189,37 +240,14 @@ class Layer:
         """Return bilinear heights [m] at places, shape ``(k,)``, NaN where void or off it."""
         out = np.full(lon_deg.size, np.nan)
         u, v = self.to_posts(lon_deg, lat_deg, float(lon_deg[0]))
-        good = np.flatnonzero(np.isfinite(u) & np.isfinite(v))
-        rows = np.floor(v[good] / CHUNK_POSTS).astype(np.int64)
-        cols = np.floor(u[good] / CHUNK_POSTS).astype(np.int64)
-        order = np.lexsort((cols, rows))
-        turns = np.flatnonzero(np.diff(rows[order]) | np.diff(cols[order])) + 1
-        for part in np.split(order, turns) if order.size else []:
-            row, col = int(rows[part[0]]), int(cols[part[0]])
-            posts = self._chunk(row, col)
+        for row, col, here in by_square(u, v):
+            posts = self.squares.get(row, col)
             if posts is None:
                 continue
-            here = good[part]
             heights = np.full(here.size, np.nan)
-            kernels.sample(posts, u[here] - col * CHUNK_POSTS, v[here] - row * CHUNK_POSTS, heights)
+            kernels.sample(posts, u[here] - col * SQUARE, v[here] - row * SQUARE, heights)
             out[here] = heights
         return out
-
-    def _chunk(self, row: int, col: int) -> Posts | None:
-        """Return a square of posts with one more row and column, None off the layer."""
-        key = (row, col)
-        with self.lock:
-            if key in self.chunks:
-                self.chunks.move_to_end(key)
-                return self.chunks[key]
-        j, i = row * CHUNK_POSTS, col * CHUNK_POSTS
-        box = (j, j + CHUNK_POSTS + 1, i, i + CHUNK_POSTS + 1)
-        posts = self.read(box) if self.placed(box) else None
-        with self.lock:
-            self.chunks[key] = posts
-            while len(self.chunks) > CHUNKS_KEPT:
-                self.chunks.popitem(last=False)
-        return posts
 
     def describe(self, file: RasterFile) -> TerrainSource:
         """Return what to show of a member."""
