@@ -106,7 +106,7 @@ def frame_for(lon_deg: float, lat_deg: float) -> Frame:
     lat0_deg = row * LATTICE_DEG
     per_turn = max(1, int(360.0 / LATTICE_DEG * math.cos(math.radians(lat0_deg))))
     step_deg = 360.0 / per_turn
-    column = round((lon_deg + 180.0) / step_deg) % per_turn
+    column = round((lon_deg + 180.0) % 360.0 / step_deg) % per_turn
     return _frame(round(column * step_deg - 180.0, 9), lat0_deg)
 
 
