@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from PIL import Image
 
 from geo.terrain import TerrainStore
+from geo.terrain_source import TerrainSource
 
 Array = NDArray[np.float64]
 
@@ -34,6 +35,9 @@ SEA_RGB = (196.0, 207.0, 216.0)
 VOID_RGB = (206.0, 204.0, 200.0)
 HATCH_RGB = (150.0, 148.0, 146.0)
 HATCH = np.add.outer(np.arange(TILE_PX), np.arange(TILE_PX)) % 8 < 2  # runs on from tile to tile
+
+SPECK_CELLS = 40.0  # posts a pixel from which a terrain smaller than a sample is a plain speck
+SPECK_RGBA = (214.0, 207.0, 192.0, 255.0)
 
 # Land like paper: pale at the shore, warm grey-buff higher up, nearly white on the tops.
 TINT_M = np.array([0.0, 150.0, 500.0, 1000.0, 1800.0, 3000.0, 5000.0])
@@ -164,6 +168,32 @@ def _box(bbox: tuple[float, float, float, float]) -> tuple[float, float, float, 
     return west, south, west + (east - west) % 360.0, north
 
 
+def _within(sources: list[TerrainSource], z: int, x: int, y: int) -> NDArray[np.bool_]:
+    """Return the pixels within the box of a source: unknown ground there is a void."""
+    middles = (np.arange(TILE_PX) + 0.5) / TILE_PX
+    lon = tile_longitude_deg(x + middles, z)
+    lat = np.array([tile_latitude_deg(y + middle, z) for middle in middles])
+    within = np.zeros((TILE_PX, TILE_PX), dtype=np.bool_)
+    for source in sources:
+        west, south, east, north = _box(source.bbox)
+        columns = (lon - west) % 360.0 <= east - west
+        rows = (lat >= south) & (lat <= north)
+        if not columns.any():  # narrower than a pixel: the nearest one
+            columns[np.argmin(np.abs((lon - west + 180.0) % 360.0 - 180.0))] = True
+        if not rows.any():
+            rows[np.argmin(np.abs(lat - south))] = True
+        within |= rows[:, None] & columns
+    return within
+
+
+def _finished(rgba: Array) -> Tile:
+    """Return RGBA [0 .. 255] as a tile."""
+    out = io.BytesIO()
+    Image.fromarray(rgba.astype(np.uint8)).save(out, "PNG", compress_level=5)
+    png = out.getvalue()
+    return Tile(png, f'"{hashlib.sha256(png).hexdigest()[:24]}"')
+
+
 class Relief:
     """Draws relief tiles from a terrain store and keeps the last ones.
 
@@ -210,41 +240,31 @@ class Relief:
     def _draw(self, z: int, x: int, y: int) -> Tile | None:
         west, east = float(tile_longitude_deg(x, z)), float(tile_longitude_deg(x + 1, z))
         north, south = tile_latitude_deg(y, z), tile_latitude_deg(y + 1, z)
-        cells_m = self._cells_m(west, south, east, north)
-        if not cells_m:
+        sources = self._meeting(west, south, east, north)
+        if not sources:
             return None
+        cell_m = min(source.cell_m for source in sources)
         tile_m = EQUATOR_M / tile_count(z) * cos((north + south) * pi / 360.0)
-        intervals = intervals_for(tile_m, min(cells_m))
+        intervals = intervals_for(tile_m, cell_m)
         ground_m = self._sample(z, x, y, intervals)
-        if np.isnan(ground_m).all():
+        within = _within(sources, z, x, y)
+        if not np.isnan(ground_m).all():
+            return _finished(self._picture(ground_m, within, tile_m))
+        if tile_m / TILE_PX < SPECK_CELLS * cell_m:
             return None
-        png = self._png(ground_m, self._within(z, x, y), tile_m)
-        return Tile(png, f'"{hashlib.sha256(png).hexdigest()[:24]}"')
+        return _finished(np.where(within[..., None], SPECK_RGBA, 0.0))
 
-    def _cells_m(self, west: float, south: float, east: float, north: float) -> list[float]:
-        """Return the post spacings [m] of the sources whose box meets this one [deg]."""
+    def _meeting(self, west: float, south: float, east: float, north: float) -> list[TerrainSource]:
+        """Return the sources whose box meets this one [deg]."""
         found = []
         for source in self._store.sources:
             left, bottom, right, top = _box(source.bbox)
             for shift in (-360.0, 0.0, 360.0):
                 apart = left + shift > east or right + shift < west
                 if not apart and bottom <= north and top >= south:
-                    found.append(source.cell_m)
+                    found.append(source)
                     break
         return found
-
-    def _within(self, z: int, x: int, y: int) -> NDArray[np.bool_]:
-        """Return the pixels within the box of a source: unknown ground there is a void."""
-        middles = (np.arange(TILE_PX) + 0.5) / TILE_PX
-        lon = tile_longitude_deg(x + middles, z)
-        lat = np.array([tile_latitude_deg(y + middle, z) for middle in middles])
-        within = np.zeros((TILE_PX, TILE_PX), dtype=np.bool_)
-        for source in self._store.sources:
-            west, south, east, north = _box(source.bbox)
-            columns = (lon - west) % 360.0 <= east - west
-            rows = (lat >= south) & (lat <= north)
-            within |= rows[:, None] & columns
-        return within
 
     def _sample(self, z: int, x: int, y: int, intervals: int) -> Array:
         """Return ground [m] at the sample points, row 0 in the north, NaN off the terrain."""
@@ -255,7 +275,8 @@ class Relief:
         ground = self._store.ground_m(lons.ravel(), lats.ravel())
         return np.asarray(ground, dtype=np.float64).reshape(lons.shape)
 
-    def _png(self, ground_m: Array, within: NDArray[np.bool_], tile_m: float) -> bytes:
+    def _picture(self, ground_m: Array, within: NDArray[np.bool_], tile_m: float) -> Array:
+        """Return RGBA [0 .. 255] of sampled ground."""
         intervals = ground_m.shape[1] - 3
         weights, slopes = cubic(intervals)
         known = weights @ (~np.isnan(ground_m)).astype(np.float64) @ weights.T
@@ -271,9 +292,4 @@ class Relief:
         void = known < 0.5
         rgb[void] = VOID_RGB
         rgb[void & HATCH] = HATCH_RGB
-        alpha = np.where(void & ~within, 0.0, 255.0)
-        rgba = np.dstack([rgb, alpha])
-        image = Image.fromarray(rgba.astype(np.uint8))
-        out = io.BytesIO()
-        image.save(out, "PNG", compress_level=5)
-        return out.getvalue()
+        return np.dstack([rgb, np.where(void & ~within, 0.0, 255.0)])
