@@ -157,7 +157,11 @@ class Layer:
         drift = max(abs(getattr(mine, term) - getattr(its, term)) for term in "abde")
         if drift * longest > SAME_GRID_CELLS * spacing or self.first.crs != file.crs:
             return False
-        col, row = ~mine * (its.c, its.f)
+        back = ~mine
+        col, row = (
+            back.a * its.c + back.b * its.f + back.c,
+            back.d * its.c + back.e * its.f + back.f,
+        )
         if max(abs(col - round(col)), abs(row - round(row))) > SAME_GRID_CELLS:
             return False
         self.members.append((file, round(row), round(col)))

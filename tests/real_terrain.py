@@ -13,8 +13,8 @@ from pathlib import Path
 
 import numpy as np
 import rasterio
+from affine import Affine
 from matplotlib.cbook import get_sample_data
-from rasterio.transform import from_origin
 
 JACKSBORO_LONLAT = (-84.25, 36.59)  # near the middle of the sample
 ALETSCH_LONLAT = (8.02, 46.50)  # near the middle of the grid
@@ -29,9 +29,8 @@ def write_jacksboro(folder: Path) -> Path:
     with sample:
         heights = np.asarray(sample["elevation"], dtype=np.int16)
         north = max(float(sample["ymin"]), float(sample["ymax"]))
-        transform = from_origin(
-            float(sample["xmin"]), north, float(sample["dx"]), float(sample["dy"])
-        )
+        west, dx, dy = (float(sample[key]) for key in ("xmin", "dx", "dy"))
+        transform = Affine(dx, 0.0, west, 0.0, -dy, north)
     target = _target(folder, "jacksboro.tif")
     with rasterio.open(
         target,
