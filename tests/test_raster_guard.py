@@ -138,8 +138,11 @@ def test_the_block_budget(tmp_path, monkeypatch):
 
 
 def test_a_block_of_more_than_64_mb_is_refused(tmp_path):
-    heights = np.zeros((8200, 8200), dtype=np.uint8)  # Derived: 67.2 million bytes, 64.1 MB
-    path = write(tmp_path / "strip.tif", heights, dtype="uint8", compress="lzw", blockysize=8200)
+    heights = np.zeros((8192, 8208), dtype=np.uint8)  # Derived: 67.2 million bytes, 64.1 MB
+    path = write(
+        tmp_path / "tile.tif", heights, dtype="uint8", compress="lzw", tiled=True,
+        blockxsize=8208, blockysize=8192,
+    )  # fmt: skip
     assert "unpacks more than 64 MB at once" in refusal_of(path)
 
 
