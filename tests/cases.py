@@ -73,9 +73,16 @@ def write_terrain(
     n = 2 * int(half_m / post_m) + 1
     transform = Affine(post_m, 0, x0 - n * post_m / 2, 0, -post_m, y0 + n * post_m / 2)
     column, row = np.meshgrid(np.arange(n) + 0.5, np.arange(n) + 0.5)
-    lon, lat = to_source.transform(*(transform * (column, row)), direction="INVERSE")
+    east, north = _applied(transform, column, row)
+    lon, lat = to_source.transform(east, north, direction="INVERSE")
     x_m, y_m = place.plane().to_xy(lon, lat)
     return write_raster(folder, height(x_m, y_m), transform, system.to_wkt(), name)
+
+
+def _applied(transform: Affine, column: Array, row: Array) -> tuple[Array, Array]:
+    """Return the places of pixel coordinates under a geotransform."""
+    x = transform.a * column + transform.b * row + transform.c
+    return x, transform.d * column + transform.e * row + transform.f
 
 
 def write_raster(folder: Path, heights: Array, transform: Affine, crs: Any, name: str) -> Path:

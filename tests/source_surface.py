@@ -46,8 +46,8 @@ class SourceSurface:
     def height_m(self, lon_deg: Array, lat_deg: Array) -> Array:
         """Return the bilinear height [m] at places [deg]."""
         x, y = self._to_source.transform(np.asarray(lon_deg, float), np.asarray(lat_deg, float))
-        column, row = self._inverse * (np.asarray(x), np.asarray(y))
-        return self._bilinear(column - 0.5, row - 0.5)
+        x, y, t = np.asarray(x), np.asarray(y), self._inverse
+        return self._bilinear(t.a * x + t.b * y + t.c - 0.5, t.d * x + t.e * y + t.f - 0.5)
 
     def _bilinear(self, column: Array, row: Array) -> Array:
         n_rows, n_columns = self.posts.shape
