@@ -9,11 +9,13 @@ from typing import Any
 from pydantic import BaseModel
 
 from service.schemas import FootprintRequest
+from service.settings import TILE_ZOOM_MAX
 
 PATH_FIELDS = {
-    "z": "a whole number, 0 to 17",
+    "z": f"a whole number, 0 to {TILE_ZOOM_MAX}",
     "x": "a whole number, 0 to 2^z - 1",
     "y": "a whole number, 0 to 2^z - 1",
+    "name": "at most 64 characters",
 }
 
 

@@ -69,8 +69,7 @@ def create_app(settings: Settings | None = None, solver: Solver | None = None) -
     app.state.start = world.start()
     app.state.catalog = world.catalog()
     app.state.relief = Relief(world.store, settings.tile_cache_bytes)
-    app.state.solves = Admission("solve", settings.solves_at_once, settings.solves_waiting)
-    app.state.tiles = Admission("tile", settings.tiles_at_once, settings.tiles_waiting)
+    _open_places(app)
     problems.install(app, settings.retry_after_s)
     app.include_router(routes.router)
     app.mount("/static/lib/map", StaticFiles(directory=library), name="library")
@@ -79,10 +78,18 @@ def create_app(settings: Settings | None = None, solver: Solver | None = None) -
     return app
 
 
+def _open_places(app: FastAPI) -> None:
+    """Make the threads and queues; again at each start, as stopping closes them for good."""
+    settings: Settings = app.state.world.settings
+    app.state.solves = Admission("solve", settings.solves_at_once, settings.solves_waiting)
+    app.state.tiles = Admission("tile", settings.tiles_at_once, settings.tiles_waiting)
+
+
 @asynccontextmanager
 async def _lifespan(app: FastAPI) -> AsyncIterator[None]:
     """Warm up before the first request is taken; stop all work at the end."""
     world: World = app.state.world
+    _open_places(app)
     if world.settings.warm_up:
         await asyncio.to_thread(warm_up, world, app.state.start)
     logger.info("Ready.")

@@ -23,7 +23,15 @@ T = TypeVar("T")
 router = APIRouter()
 
 
-class GeoJSONResponse(Response):
+class AnswerResponse(JSONResponse):
+    """A JSON answer; a number that is not finite is a defect and never sent."""
+
+    def render(self, content: Any) -> bytes:
+        """Return the body."""
+        return convert.encode(content)
+
+
+class GeoJSONResponse(AnswerResponse):
     """A GeoJSON answer."""
 
     media_type = "application/geo+json"
@@ -52,8 +60,7 @@ async def footprint(request: Request, body: FootprintRequest) -> Response:
 
     def work(flag: Flag) -> Response:
         record, found = world.solve(body, flag)
-        answer = convert.footprint_json(body, record, found)
-        return GeoJSONResponse(convert.encode(answer))
+        return GeoJSONResponse(convert.footprint_json(body, record, found))
 
     return await _admit(request, request.app.state.solves, work)
 
@@ -71,8 +78,7 @@ async def section_to(request: Request, body: SectionRequest) -> Response:
 
     def work(flag: Flag) -> Response:
         record, found = world.solve(body, flag)
-        answer = section.section_json(body, record, found)
-        return Response(convert.encode(answer), media_type="application/json")
+        return AnswerResponse(section.section_json(body, record, found))
 
     return await _admit(request, request.app.state.solves, work)
 
@@ -144,13 +150,16 @@ async def health(request: Request) -> Response:
     return JSONResponse(state, headers={"Cache-Control": "no-store"})
 
 
+TypeName = Annotated[str, Path(max_length=64, description="The last part of a type URI.")]
+
+
 @router.get(
     "/problems/{name}",
     summary="What a problem type means",
     response_class=PlainTextResponse,
-    responses={200: TEXT, **problem_responses(404, 500)},
+    responses={200: TEXT, **problem_responses(404, 422, 500)},
 )
-async def problem_type(name: str) -> Response:
+async def problem_type(name: TypeName) -> Response:
     """Return status and title of a problem type, as its `type` member points here."""
     for kind in ALL_TYPES:
         if kind.slug == name:
