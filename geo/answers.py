@@ -37,11 +37,14 @@ class GlidePath:
         Altitude that the answer claims over the place [m]; never above the last point's.
     bends
         Turns after the first.
+    line
+        The same path for drawing, arcs included: (longitude [deg], latitude [deg], altitude [m]).
     """
 
     points: tuple[PathPoint, ...]
     claimed_alt_m: float
     bends: int
+    line: tuple[tuple[float, float, float], ...] = ()
 
 
 @dataclass(frozen=True)

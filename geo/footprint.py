@@ -1,0 +1,342 @@
+"""The gliding footprint: from one engine failure to the ground that can be reached.
+
+The order of the work: the glide table of this case in the local frame, the window of terrain that
+it can touch, the first seconds, the straight glides from the end of each first turn, the front
+that bends round terrain, the outlines.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cached_property
+from math import cos, pi, sin
+
+import numpy as np
+from numpy.typing import NDArray
+from shapely.geometry import MultiPolygon
+
+from geo import explain as _explain
+from geo import kernels as k
+from geo import paths as _paths
+from geo.answers import Explanation, GlidePath, ProfilePoint, SiteReach
+from geo.case import GlideCase, SolveLimits
+from geo.frame import Frame, frame_for
+from geo.glide import LEVEL_STEP_M, LOWEST_GROUND_M, Glide, GlideFigures, prepare
+from geo.grid import Grid, choose_grid, reach_box_m
+from geo.outline import to_lonlat, trace
+from geo.sites import Site
+from geo.terrain import TerrainSource, TerrainStore
+from perf.errors import Cancelled, TerrainError
+
+Array = NDArray[np.float64]
+
+FIRST_TURN_MAX_RAD = 210.0 * pi / 180.0  # either way round; farther round is left to the front
+MAX_ANCHORS = 60_000
+ANCHOR_SPACING_CELLS = 4
+JUMP_M = 15.0  # a label lower than its neighbour's by this much, and by the glide over
+JUMP_CELLS = 3.0  # so many cells, is worth a new bend
+ROOM_M = 5.0  # height above the clearance that a bend must have to spare
+DETOUR_CELLS = 12.0  # cells beyond the turn that a ray may fly before it must find new ground
+N_RANGES = 36
+LOWEST_SPARE_M = 30.0  # ground may be this much lower between the places sampled
+
+
+@dataclass(frozen=True)
+class Labels:
+    """What the kernels leave behind: one path for every cell reached.
+
+    Parameters
+    ----------
+    top_m
+        Highest point of each cell [m], +inf where blocked, shape ``(n_rows, n_cols)``.
+    alt_m
+        Altitude of arrival [m], ``kernels.UNREACHED`` where no path arrives.
+    ray
+        Number of the ray behind each label, -1 where none.
+    anchors
+        Anchor table, shape ``(n_anchors, kernels.N_ANCHOR)``.
+    run
+        Cells flown per metre of height, shape ``(n_levels - 1, n_tracks)``.
+    par
+        Scalars of the solve.
+    straight
+        Cells whose arrival height is kept by one straight glide after the first turn.
+    reach
+        Cells whose arrival height is kept by any path.
+    """
+
+    top_m: NDArray[np.float32]
+    alt_m: NDArray[np.float32]
+    ray: NDArray[np.int32]
+    anchors: Array
+    run: Array
+    par: Array
+    straight: NDArray[np.bool_]
+    reach: NDArray[np.bool_]
+
+
+@dataclass(frozen=True)
+class Footprint:
+    """The answer to one case. See the properties and methods; SI inside, degrees in outlines."""
+
+    case: GlideCase
+    glide: Glide
+    grid: Grid
+    store: TerrainStore
+    labels: Labels
+    ground_m: float
+    footprint: MultiPolygon
+    straight: MultiPolygon
+    sources: tuple[TerrainSource, ...]
+    limits: list[str]
+    landing_sites: tuple[Site, ...] = ()
+
+    @property
+    def figures(self) -> GlideFigures:
+        """The numbers behind the picture."""
+        return self.glide.figures
+
+    @property
+    def cell_m(self) -> float:
+        """Edge of a solver cell [m]."""
+        return self.grid.cell_m
+
+    @property
+    def footprint_km2(self) -> float:
+        """Area of the cells reached by any path [km2]."""
+        return float(self.labels.reach.sum()) * self.cell_m**2 / 1e6
+
+    @property
+    def straight_km2(self) -> float:
+        """Area of the cells reached by one straight glide after the first turn [km2]."""
+        return float(self.labels.straight.sum()) * self.cell_m**2 / 1e6
+
+    @cached_property
+    def ranges(self) -> list[tuple[float, float]]:
+        """Farthest reached cell on 36 true bearings: (bearing [rad], distance [m])."""
+        return _ranges(self)
+
+    @cached_property
+    def sites(self) -> list[SiteReach]:
+        """Landing sites within the window, nearest first."""
+        return _explain.sites_in_reach(self, self.landing_sites)
+
+    def path_to(self, lon: float, lat: float) -> GlidePath | None:
+        """Return the path behind the cell of a place [deg], or None where no path arrives."""
+        return _paths.path_to(self.glide, self.grid, self.labels, lon, lat)
+
+    def explain(self, lon: float, lat: float) -> Explanation:
+        """Say why a place [deg] is in or out of range."""
+        return _explain.explain(self, lon, lat)
+
+    def section(self, lon: float, lat: float) -> list[ProfilePoint]:
+        """Return ground, clearance and glide line straight from the failure to a place [deg]."""
+        return _explain.straight_section(self, lon, lat)
+
+    def path_profile(self, path: GlidePath) -> list[ProfilePoint]:
+        """Return ground, clearance and glide line along a path."""
+        return _explain.path_profile(self, path)
+
+
+def solve(
+    store: TerrainStore,
+    case: GlideCase,
+    *,
+    sites: Sequence[Site] = (),
+    limits: SolveLimits | None = None,
+    cancel: NDArray[np.uint8] | None = None,
+) -> Footprint:
+    """Return the footprint of one case.
+
+    Parameters
+    ----------
+    store
+        Terrain, obstacles and land cover.
+    case
+        Aeroplane, air, place and margins.
+    sites
+        Landing sites to report on.
+    limits
+        Largest solve that is started.
+    cancel
+        One byte; set to 1 from another thread it stops the solve.
+
+    Raises
+    ------
+    TerrainError
+        There is no terrain at the position.
+    InputError
+        The altitude is at or below the ground.
+    LimitError
+        The solve would be too large.
+    Cancelled
+        `cancel` was set.
+    """
+    limits = limits or SolveLimits()
+    cancel = np.zeros(1, dtype=np.uint8) if cancel is None else cancel
+    frame = frame_for(case.lon_deg, case.lat_deg)
+    ground_m = float(store.ground_m(np.array([case.lon_deg]), np.array([case.lat_deg]))[0])
+    if np.isnan(ground_m):
+        raise TerrainError(
+            "There is no terrain at this position.", "position", "a place on the terrain loaded"
+        )
+    glide = prepare(case, frame, ground_m)
+    grid = _grid(store, glide, frame, limits)
+    window = store.window(frame, grid.col0, grid.row0, grid.n_cols, grid.n_rows, grid.cell_m)
+    labels = label(glide, grid, window.top_m, cancel)
+    return Footprint(
+        case, glide, grid, store, labels, ground_m,
+        to_lonlat(trace(labels.reach), frame, grid.col0, grid.row0, grid.cell_m),
+        to_lonlat(trace(labels.straight), frame, grid.col0, grid.row0, grid.cell_m),
+        window.sources, _sentences(store, glide, grid, labels), tuple(sites),
+    )  # fmt: skip
+
+
+def _grid(store: TerrainStore, glide: Glide, frame: Frame, limits: SolveLimits) -> Grid:
+    """Return the window that the glide can touch, down to the lowest ground sampled in it."""
+    case = glide.case
+    x_m, y_m = frame.to_xy_m(case.lon_deg, case.lat_deg)
+    west, south, east, north = reach_box_m(glide, LOWEST_GROUND_M)
+    xs, ys = np.meshgrid(np.linspace(west, east, 49) + x_m, np.linspace(south, north, 49) + y_m)
+    ground = store.ground_m(*frame.to_lonlat(xs.ravel(), ys.ravel()))
+    lowest_m = min(float(np.nanmin(ground, initial=np.inf)), case.alt_m) - LOWEST_SPARE_M
+    reach = reach_box_m(glide, lowest_m + arrival_m(case))
+    return choose_grid(frame, float(x_m), float(y_m), reach, limits, case.detail)
+
+
+def arrival_m(case: GlideCase) -> float:
+    """Return the height above the ground that counts on arrival [m]: never below the clearance."""
+    return max(case.margins.arrival_height_m, case.margins.clearance_m)
+
+
+def label(
+    glide: Glide, grid: Grid, top_m: NDArray[np.float32], cancel: NDArray[np.uint8]
+) -> Labels:
+    """Return the labels of every cell of a window.
+
+    Parameters
+    ----------
+    glide
+        The case in the frame.
+    grid
+        The window.
+    top_m
+        Highest point of each cell [m], NaN where void, shape ``(n_rows, n_cols)``.
+    cancel
+        One byte that stops the work when set.
+
+    Raises
+    ------
+    Cancelled
+        `cancel` was set.
+    """
+    void = np.isnan(top_m)
+    lowest_m = float(np.nanmin(top_m, initial=np.inf))
+    top = np.where(void, np.float32(np.inf), top_m)
+    need_m = arrival_m(glide.case)
+    par = _parameters(glide, grid, min(lowest_m, glide.case.alt_m) + need_m)
+    alt = np.full(top.shape, k.UNREACHED, dtype=np.float32)
+    ray = np.full(top.shape, -1, dtype=np.int32)
+    anchors = np.zeros((MAX_ANCHORS, k.N_ANCHOR))
+    run = glide.run / grid.cell_m
+    n_roots = _roots(glide, grid, top, run, par, anchors)
+    touched = np.empty(0, dtype=np.int32)
+    for root in range(n_roots):
+        k.fan(top, alt, ray, run, glide.air, par, anchors, root, touched, True)
+    straight = alt >= top + np.float32(need_m)
+    n_anchors = k.spread(
+        top, alt, ray, run, glide.air, par, anchors, n_roots, cancel, ANCHOR_SPACING_CELLS
+    ) if n_roots else 0  # fmt: skip
+    if n_anchors < 0 or cancel[0]:
+        raise Cancelled
+    reach = alt >= top + np.float32(need_m)
+    return Labels(top, alt, ray, anchors[:n_anchors].copy(), run, par, straight, reach)
+
+
+def _parameters(glide: Glide, grid: Grid, floor_m: float) -> Array:
+    margins, par = glide.case.margins, np.zeros(k.N_PAR)
+    par[k.CELL_M], par[k.CLEARANCE_M], par[k.FLOOR_M] = grid.cell_m, margins.clearance_m, floor_m
+    par[k.LEVEL0_M], par[k.LEVEL_STEP_M] = glide.table.alt_m[0], LEVEL_STEP_M
+    par[k.BANK_SIN], par[k.BANK_COS] = sin(margins.bank_rad), cos(margins.bank_rad)
+    par[k.RATIO], par[k.DOWNDRAFT_MPS] = glide.table.ratio, margins.downdraft_mps
+    par[k.MAX_RUN] = glide.run.max() / grid.cell_m
+    loss = min(float(glide.table.loss.max()), 4.0 / glide.table.ratio)
+    par[k.JUMP_M] = JUMP_M + JUMP_CELLS * grid.cell_m * loss
+    par[k.ROOM_M], par[k.DETOUR_CELLS] = ROOM_M, DETOUR_CELLS
+    return par
+
+
+def _roots(
+    glide: Glide, grid: Grid, top: NDArray[np.float32], run: Array, par: Array, anchors: Array
+) -> int:
+    """Write the fans that leave the failure itself and return how many they are.
+
+    With a track: one ray straight on from the failure, then the right and the left first turn
+    from the end of the reaction. Without: one fan all round from the failure. None where the
+    failure itself lies below the clearance; no turns where the reaction meets it.
+    """
+    case = glide.case
+    x_m, y_m = grid.frame.to_xy_m(case.lon_deg, case.lat_deg)
+    x, y = float(x_m) / grid.cell_m - grid.col0, float(y_m) / grid.cell_m - grid.row0
+    z = glide.start_alt_m
+    reach = max((z - par[k.FLOOR_M]) * par[k.MAX_RUN], 8.0)
+    root = anchors[0]
+    root[k.AX], root[k.AY], root[k.AZ], root[k.PARENT] = x, y, z, -1
+    root[k.HX], root[k.HY], root[k.SIDE] = 0.0, 1.0, 1.0
+    if not k.is_clear(top, par, root):
+        return 0
+    if glide.track_rad is None:
+        root[k.COUNT], root[k.STEP] = np.ceil(2 * pi * reach), 2 * pi / np.ceil(2 * pi * reach)
+        return 1
+    dx, dy = sin(glide.track_rad), cos(glide.track_rad)
+    if not k.heading_for(glide.air, par, z, dx, dy, root[k.HX : k.HY + 1]):
+        return 0
+    root[k.COUNT], root[k.STEP] = 1, 0.0
+    end = np.empty(3)
+    if not k.fly_on(top, run, glide.air, par, root, glide.figures.reaction_s, end):
+        return 1
+    for j, side in ((1, 1.0), (2, -1.0)):
+        turn = anchors[j]
+        turn[:] = root
+        turn[k.AX], turn[k.AY], turn[k.AZ], turn[k.SIDE], turn[k.TURNS] = *end, side, 1.0
+        turn[k.STEP], turn[k.COUNT] = 1.0 / reach, np.floor(FIRST_TURN_MAX_RAD * reach)
+        turn[k.OFFSET] = anchors[j - 1, k.OFFSET] + anchors[j - 1, k.COUNT]
+    return 3
+
+
+def _sentences(store: TerrainStore, glide: Glide, grid: Grid, labels: Labels) -> list[str]:
+    """Return what this answer leaves out, in sentences."""
+    sentences = [*glide.notes, *store.notes]
+    if not labels.reach.any():
+        sentences.append(
+            "These margins leave nothing within modelled range here. That does not mean that no"
+            " landing is possible."
+        )
+    if len(labels.anchors) >= MAX_ANCHORS - 1:
+        sentences.append("The search for bent paths was cut short; more ground may be in reach.")
+    return [*sentences, f"Solved on cells of {grid.cell_m:.0f} m."]
+
+
+def _ranges(answer: Footprint) -> list[tuple[float, float]]:
+    """Return the farthest reached cell on each of 36 true bearings."""
+    grid, case = answer.grid, answer.case
+    x_m, y_m = grid.frame.to_xy_m(case.lon_deg, case.lat_deg)
+    x, y = float(x_m) / grid.cell_m - grid.col0, float(y_m) / grid.cell_m - grid.row0
+    steps = np.arange(0.0, np.hypot(grid.n_cols, grid.n_rows), 0.5)
+    found = []
+    for i in range(N_RANGES):
+        bearing = 2 * pi * i / N_RANGES
+        at = bearing + answer.glide.convergence_rad
+        cols = np.floor(x + steps * sin(at)).astype(np.int64)
+        rows = np.floor(y + steps * cos(at)).astype(np.int64)
+        inside = (cols >= 0) & (rows >= 0) & (cols < grid.n_cols) & (rows < grid.n_rows)
+        hits = np.flatnonzero(answer.labels.reach[rows[inside], cols[inside]])
+        found.append((bearing, float(steps[inside][hits[-1]] * grid.cell_m) if hits.size else 0.0))
+    return found
+
+
+def warm_up(store: TerrainStore, case: GlideCase) -> None:
+    """Compile every kernel by solving a small case, and explain one place of it."""
+    answer = solve(store, case)
+    answer.explain(case.lon_deg, case.lat_deg)

@@ -1,0 +1,103 @@
+"""Outlines of the reached cells: valid polygons with holes, light, in longitude and latitude."""
+
+from __future__ import annotations
+
+import contourpy
+import numpy as np
+import shapely
+from numpy.typing import NDArray
+from shapely.geometry import MultiPolygon, box
+
+from geo.frame import Frame
+
+SIMPLIFY_CELLS = 0.7  # largest shift of an outline by simplification [cells]
+SPECK_CELLS = 3.5  # islands and holes of up to 3 cells are left out: a hole of 3 cells lies
+# within one cell of reached ground all over, and an island left out only takes ground away
+
+
+def trace(mask: NDArray[np.bool_]) -> MultiPolygon:
+    """Return the outline of the true cells, in cells from the grid's south-west corner.
+
+    Parameters
+    ----------
+    mask
+        Reached cells, shape ``(n_rows, n_cols)``, row 0 in the south.
+
+    Returns
+    -------
+    MultiPolygon
+        Valid; no point of it is farther than one cell from a true cell.
+    """
+    if not mask.any():
+        return MultiPolygon()
+    rows, cols = np.flatnonzero(mask.any(axis=1)), np.flatnonzero(mask.any(axis=0))
+    r0, c0 = rows[0], cols[0]
+    padded = np.pad(mask[r0 : rows[-1] + 1, c0 : cols[-1] + 1], 1).astype(np.float32)
+    contours = contourpy.contour_generator(
+        z=padded, name="serial", fill_type=contourpy.FillType.OuterOffset
+    )
+    points, offsets = contours.filled(0.5, 2.0)
+    pieces = [_polygon(p, o) for p, o in zip(points, offsets, strict=True)]
+    outline = shapely.simplify(
+        MultiPolygon([piece for piece in pieces if piece is not None]), SIMPLIFY_CELLS
+    )
+    if not outline.is_valid:
+        outline = shapely.make_valid(outline, method="structure", keep_collapsed=False)
+    moved = shapely.transform(outline, lambda xy: xy + (c0 - 0.5, r0 - 0.5))
+    return _as_multi(moved)
+
+
+def _polygon(points: NDArray[np.float64], offsets: NDArray[np.uint32]) -> shapely.Polygon | None:
+    """Return one contour as a polygon, its specks left out; None when it is a speck itself."""
+    rings = [points[a:b] for a, b in zip(offsets[:-1], offsets[1:], strict=True)]
+    if abs(_ring_area(rings[0])) < SPECK_CELLS:
+        return None
+    holes = [ring for ring in rings[1:] if abs(_ring_area(ring)) >= SPECK_CELLS]
+    return shapely.Polygon(rings[0], holes)
+
+
+def _ring_area(ring: NDArray[np.float64]) -> float:
+    x, y = ring[:, 0], ring[:, 1]
+    return 0.5 * float(np.dot(x[:-1], y[1:]) - np.dot(x[1:], y[:-1]))
+
+
+def _as_multi(shape: shapely.Geometry) -> MultiPolygon:
+    """Return the polygons of any geometry as one MultiPolygon, exteriors counter-clockwise."""
+    parts = [part for part in shapely.get_parts(shape) if part.geom_type == "Polygon"]
+    parts += [p for m in shapely.get_parts(shape) if m.geom_type == "MultiPolygon" for p in m.geoms]
+    return shapely.orient_polygons(MultiPolygon(parts), exterior_cw=False)
+
+
+def to_lonlat(
+    outline: MultiPolygon, frame: Frame, col0: int, row0: int, cell_m: float
+) -> MultiPolygon:
+    """Return an outline in cells as longitude and latitude [deg], cut at the 180th meridian.
+
+    Source: RFC 7946 sections 3.1.6 (right-hand rule) and 3.1.9 (antimeridian cutting).
+    """
+    if outline.is_empty:
+        return MultiPolygon()
+
+    def geographic(xy: NDArray[np.float64]) -> NDArray[np.float64]:
+        lon, lat = frame.to_lonlat((xy[:, 0] + col0) * cell_m, (xy[:, 1] + row0) * cell_m)
+        lon = frame.lon0_deg + (np.asarray(lon) - frame.lon0_deg + 180.0) % 360.0 - 180.0
+        return np.round(np.column_stack((lon, lat)), 6)
+
+    shape = shapely.transform(outline, geographic)
+    if not shape.is_valid:
+        shape = shapely.make_valid(shape, method="structure", keep_collapsed=False)
+    west, _, east, _ = shape.bounds
+    if west < -180.0 or east > 180.0:
+        shape = _cut(shape)
+    return _as_multi(shape)
+
+
+def _cut(shape: shapely.Geometry) -> shapely.Geometry:
+    """Cut a shape whose longitudes run past 180 degrees and bring the pieces back."""
+    pieces = []
+    for turns in (-1, 0, 1):
+        part = shapely.intersection(shape, box(360 * turns - 180, -90, 360 * turns + 180, 90))
+        pieces += list(
+            _as_multi(shapely.transform(part, lambda xy, t=turns: xy - (360.0 * t, 0.0))).geoms
+        )
+    return MultiPolygon(pieces)
