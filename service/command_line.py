@@ -6,13 +6,14 @@ import argparse
 import json
 import logging
 import sys
+import tomllib
 from collections.abc import Sequence
 from pathlib import Path
 from typing import Any, NoReturn
 
 from pydantic import ValidationError
 
-from perf.errors import ModelError
+from perf.errors import ModelError, RecordError
 from perf.record import load_record
 from service import convert
 from service.allowed import allowed_at
@@ -138,6 +139,22 @@ def read_case(path: Path) -> dict[str, Any]:
     return case
 
 
+def read_record(path: Path) -> dict[str, Any]:
+    """Return the keys of a record's file, checked.
+
+    Raises
+    ------
+    RecordError
+        The file is missing or faulty; the field starts with `aircraft`.
+    """
+    try:
+        load_record(path)
+    except RecordError as error:
+        field = f"aircraft.{error.field}" if error.field else "aircraft"
+        raise RecordError(error.detail, field, error.allowed) from None
+    return tomllib.loads(path.read_text(encoding="utf-8"))
+
+
 def request_of(options: argparse.Namespace) -> FootprintRequest:
     """Return the request that the options and the case file make.
 
@@ -152,6 +169,8 @@ def request_of(options: argparse.Namespace) -> FootprintRequest:
         value = getattr(options, name)
         if value is not None:
             case[name] = value
+    if isinstance(case.get("aircraft"), str) and case["aircraft"].endswith(".toml"):
+        case["aircraft"] = read_record(Path(case["aircraft"]))
     given = {name: getattr(options, name) for name in MARGINS if getattr(options, name) is not None}
     if given:
         held = case.get("margins")
@@ -171,6 +190,16 @@ def _line(parts: Sequence[str | int], kind: str) -> str:
     return f"{option(name)}: {detail}" + (f" Allowed: {allowed}." if allowed else "")
 
 
+def _fault(error: ModelError) -> str:
+    """Return a domain error as a sentence, led by the option's name."""
+    parts = error.field.split(".") if error.field else []
+    name = parts[-1] if parts[:1] == ["margins"] else "".join(parts[:1])
+    lead = f"{option(name)}: " if name else ""
+    where = f" ({'.'.join(parts[1:])})" if name == "aircraft" and len(parts) > 1 else ""
+    allowed = f" Allowed: {error.allowed}." if error.allowed else ""
+    return f"{lead}{error.detail}{where}{allowed}"
+
+
 def run_footprint(options: argparse.Namespace) -> int:
     """Write the footprint and return the exit code.
 
@@ -185,9 +214,6 @@ def run_footprint(options: argparse.Namespace) -> int:
     settings = Settings(data=options.data or default_data())
     check_data(settings)
     world = load_world(settings)
-    if isinstance(request.aircraft, str) and request.aircraft.endswith(".toml"):
-        record = load_record(Path(request.aircraft))
-        world.records[request.aircraft] = record
     record, footprint = world.solve(request)
     answer = convert.encode(convert.footprint_json(request, record, footprint)) + b"\n"
     if options.out is None:
@@ -245,9 +271,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except Refused as refused:
         lines = list(refused.lines)
     except ModelError as error:
-        name = f"{option(error.field.split('.')[-1])}: " if error.field else ""
-        allowed = f" Allowed: {error.allowed}." if error.allowed else ""
-        lines = [f"{name}{error.detail}{allowed}"]
+        lines = [_fault(error)]
     except SettingsError as error:
         print(error, file=sys.stderr)
         return EXIT_FAILED
