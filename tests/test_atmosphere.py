@@ -1,5 +1,7 @@
 """The atmosphere against the standard's own table, two independent libraries and altimetry."""
 
+from collections.abc import Callable
+
 import numpy as np
 import pytest
 from ambiance import Atmosphere
@@ -200,7 +202,7 @@ def test_arrays_keep_their_shape() -> None:
         (lambda: air.isa_altitude_m(0.0), "pressure_pa"),
     ],
 )
-def test_out_of_range_is_refused_by_name(call, field: str) -> None:  # type: ignore[no-untyped-def]
+def test_out_of_range_is_refused_by_name(call: Callable[[], object], field: str) -> None:
     with pytest.raises(InputError) as caught:
         call()
     assert caught.value.field == field

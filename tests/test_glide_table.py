@@ -155,7 +155,9 @@ def test_wind_policy_keeps_its_limits_and_is_never_worse() -> None:
     wind = {"east": [0.0, 25.0], "north": [-5.0, 10.0], "at": [0.0, 3000.0]}
     slow = table(TRAINER, **wind, speed_policy="wind", maximum_speed_eas_mps=37.0)
     assert np.nanmax(slow.speed_eas_mps) == pytest.approx(37.0)
-    assert np.nanmin(slow.speed_eas_mps) >= 1.2 * 23.0
+    near_stall = Polar(35.0, 9.0, 28.0, 760.0)
+    tail = table(near_stall, north=20.0, alt_levels_m=[0.0], speed_policy="wind")
+    assert tail.speed_eas_mps[0, NORTH] == pytest.approx(1.2 * 28.0)
     free = table(TRAINER, **wind, speed_policy="wind", maximum_speed_eas_mps=70.0)
     assert np.nanmax(free.speed_eas_mps) > 40.0
     assert np.all(free.loss <= table(TRAINER, **wind).loss * (1.0 + 1e-6))
@@ -242,6 +244,23 @@ def test_shear_charge_closed_form() -> None:
         assert sheared.loss[i, SOUTH] == pytest.approx(steady.loss[0, SOUTH])
 
 
+def test_shear_is_charged_along_the_heading_not_the_track() -> None:
+    # Derived: to hold airspeed along the heading, only the change of wind along it counts.
+    wind = {"at": [0.0, 2000.0], "east": [12.0, -20.0], "north": [-6.0, -30.0]}
+    sheared = table(TRAINER, **wind, alt_levels_m=[400.0, 500.0, 600.0])
+    steady = table(
+        TRAINER,
+        east=sheared.wind_east_mps[1],
+        north=sheared.wind_north_mps[1],
+        alt_levels_m=[500.0],
+    )
+    heading = steady.heading_rad[0]
+    assert np.ptp(heading - steady.track_rad) > 0.2
+    slope = (32.0 * np.sin(heading) + 24.0 * np.cos(heading)) / 2000.0
+    divisor = 1.0 - sheared.tas_mps[1] / GRAVITY_MPS2 * np.maximum(slope, 0.0)
+    assert sheared.loss[1] == pytest.approx(steady.loss[0] / divisor, rel=1e-9)
+
+
 def test_a_thin_layer_of_wind_is_not_stepped_over() -> None:
     # Derived: a jet of 8 m/s between two table levels; descending north it is a headwind that
     # appears (no credit) and fades (charged): the interval's charge is the fade over its height.
@@ -255,12 +274,18 @@ def test_a_thin_layer_of_wind_is_not_stepped_over() -> None:
 
 
 def test_shear_beyond_what_the_descent_can_pay_is_no_track() -> None:
-    # Derived: 1 - (V/g) slope is below 0.05 at V 35 and 0.28 1/s.
+    # Derived: 1 - (V/g) slope is below 0.05 at V 35 and 0.28 1/s. The limit itself is ours: the
+    # path would be twenty times as steep as in still air.
     wind = {"at": [1000.0, 1050.0], "east": [0.0, 0.0], "north": [0.0, -14.0]}
     result = table(TRAINER, **wind, alt_levels_m=np.linspace(950.0, 1100.0, 16))
     assert np.all(np.isinf(result.loss[5:11, NORTH]))
     assert np.all(np.isfinite(result.loss[:, SOUTH]))
     assert result.holdable_below_m == pytest.approx(1000.0)
+    for room, held in ((0.06, True), (0.04, False)):
+        fade = (1.0 - room) * GRAVITY_MPS2 / 35.0
+        wind = {"at": [0.0, 1.0], "east": [0.0, 0.0], "north": [0.0, -fade]}
+        thin = table(TRAINER, **wind, alt_levels_m=[0.0, 1.0])
+        assert math.isfinite(thin.loss[0, NORTH]) is held
 
 
 def test_wind_error_comes_off_every_track() -> None:

@@ -154,6 +154,17 @@ def test_states_of_propeller_and_configuration_add_their_drag() -> None:
     assert polar.stall_eas_mps / KT_MPS == pytest.approx(40.0)
 
 
+def test_two_measured_pairs_add_what_each_changes() -> None:
+    # Derived: drag = a V^2 + b / V^2 with a = 1 / (2 E v^2), b = v^2 / (2 E) of each pair; then
+    # E = 1 / (2 sqrt(a b)) and v = (b / a)^(1/4).
+    flaps = {"name": "flaps", "best_glide_eas_kt": 62, "ratio": 7, "source": "invented"}
+    polar = load_record(changed("configuration.1", flaps)).polar(None, "feathered", "flaps")
+    a = (1 / (11 * 74**2) + 1 / (7 * 62**2) - 1 / (9 * 70**2)) / 2
+    b = (74**2 / 11 + 62**2 / 7 - 70**2 / 9) / 2
+    assert polar.ratio == pytest.approx(1 / (2 * math.sqrt(a * b)), rel=1e-8)
+    assert polar.best_glide_eas_mps / KT_MPS == pytest.approx((b / a) ** 0.25)
+
+
 def test_mass_of_each_figure_is_its_own() -> None:
     # Derived: speeds given at 700 and 600 kg are scaled from those masses to 800 kg.
     data = changed("speeds.stall_mass_kg", 600, changed("glide.mass_kg", 700))
