@@ -15,6 +15,39 @@ _DIAGONAL = 1.4142135623730951
 
 
 @njit
+def _append(head, tail, link, level, i):
+    """Put cell i at the end of its level's queue."""
+    if head[level] < 0:
+        head[level] = i
+    else:
+        link[tail[level]] = i
+    tail[level] = i
+    link[i] = -1
+
+
+@njit
+def _neighbours(i, rows, cols, found):
+    """Fill `found` with the cells round i; return how many there are."""
+    r = i // cols
+    c = i % cols
+    n = 0
+    for dr in range(-1, 2):
+        for dc in range(-1, 2):
+            inside = 0 <= r + dr < rows and 0 <= c + dc < cols
+            if inside and (dr != 0 or dc != 0):
+                found[n] = i + dr * cols + dc
+                n += 1
+    return n
+
+
+@njit
+def _fall(height, i, j, cols):
+    """Return the slope from cell i down to its neighbour j [m per cell]."""
+    straight = i // cols == j // cols or i % cols == j % cols
+    return (height[i] - height[j]) / (1.0 if straight else _DIAGONAL)
+
+
+@njit
 def drainage(height_m, outlet):
     """Return the cells from the outlets upward and the cell that each one drains to.
 
@@ -22,63 +55,40 @@ def drainage(height_m, outlet):
     the hollow's lowest sill.
     """
     rows, cols = height_m.shape
-    n = rows * cols
+    height, leaves = height_m.ravel(), outlet.ravel()
+    n = height.size
+    top = np.int64(4000 * _STEPS_PER_M)
     level = np.empty(n, np.int32)
-    state = np.zeros(n, np.int8)
-    link = np.full(n, -1, np.int32)
-    receiver = np.full(n, -1, np.int32)
+    waiting, done = np.zeros(n, np.bool_), np.zeros(n, np.bool_)
+    link, receiver = np.full(n, -1, np.int32), np.full(n, -1, np.int32)
+    head, tail = np.full(top, -1, np.int32), np.full(top, -1, np.int32)
     order = np.empty(n, np.int32)
-    buckets = np.int64(4000 * _STEPS_PER_M)
-    head = np.full(buckets, -1, np.int32)
-    tail = np.full(buckets, -1, np.int32)
+    found = np.empty(8, np.int64)
     for i in range(n):
-        z = height_m[i // cols, i % cols]
-        level[i] = min(buckets - 1, max(0, np.int64(z * _STEPS_PER_M)))
-        if outlet[i // cols, i % cols]:
-            state[i] = 1
+        level[i] = min(top - 1, max(0, np.int64(height[i] * _STEPS_PER_M)))
+        if leaves[i]:
+            waiting[i] = True
             receiver[i] = i
-            b = level[i]
-            if head[b] < 0:
-                head[b] = i
-            else:
-                link[tail[b]] = i
-            tail[b] = i
+            _append(head, tail, link, level[i], i)
     count = 0
-    for b in range(buckets):
-        while head[b] >= 0:
-            i = head[b]
-            head[b] = link[i]
+    for flood in range(top):
+        while head[flood] >= 0:
+            i = head[flood]
+            head[flood] = link[i]
             order[count] = i
             count += 1
-            state[i] = 2
-            r = i // cols
-            c = i % cols
+            done[i] = True
             steepest = 0.0
-            for dr in range(-1, 2):
-                for dc in range(-1, 2):
-                    if (dr == 0 and dc == 0) or not (
-                        0 <= r + dr < rows and 0 <= c + dc < cols
-                    ):
-                        continue
-                    j = i + dr * cols + dc
-                    if state[j] == 0:
-                        state[j] = 1
-                        receiver[j] = i
-                        level[j] = max(level[j], b)
-                        link[j] = -1
-                        q = level[j]
-                        if head[q] < 0:
-                            head[q] = j
-                        else:
-                            link[tail[q]] = j
-                        tail[q] = j
-                    elif state[j] == 2 and receiver[i] != i:
-                        fall = height_m[r, c] - height_m[r + dr, c + dc]
-                        if dr != 0 and dc != 0:
-                            fall /= _DIAGONAL
-                        if fall > steepest:
-                            steepest = fall
-                            receiver[i] = j
+            for k in range(_neighbours(i, rows, cols, found)):
+                j = found[k]
+                if not waiting[j]:
+                    waiting[j] = True
+                    receiver[j] = i
+                    level[j] = max(level[j], flood)
+                    _append(head, tail, link, level[j], j)
+                elif done[j] and receiver[i] != i and _fall(height, i, j, cols) > steepest:
+                    steepest = _fall(height, i, j, cols)
+                    receiver[i] = j
     return order, receiver
 
 
@@ -94,15 +104,22 @@ def drained_area(order, receiver, cell_km):
 
 
 @njit
-def erode(height_m, envelope_m, softness, outlet, cell_m, lift, cut, scree):
-    """Let the ground rise towards its envelope and rivers cut it, one step, in place.
+def creep(height_m, fixed, share):
+    """Round the slopes: move each free cell `share` of the way to its neighbours' mean."""
+    old = height_m.copy()
+    rows, cols = height_m.shape
+    for r in range(1, rows - 1):
+        for c in range(1, cols - 1):
+            if fixed[r, c]:
+                continue
+            mean = 0.25 * (old[r - 1, c] + old[r + 1, c] + old[r, c - 1] + old[r, c + 1])
+            height_m[r, c] = old[r, c] + share * (mean - old[r, c])
 
-    `lift` is the share of the gap to the envelope that is made good, `cut` scales the rivers'
-    work, `scree` is the steepest slope that holds [tangent].
-    """
+
+@njit
+def _cut(height_m, envelope_m, softness, order, receiver, area, cell_m, lift, cut, scree):
+    """Do one step of lifting and cutting along a given drainage, in place."""
     cols = height_m.shape[1]
-    order, receiver = drainage(height_m, outlet)
-    area = drained_area(order, receiver, cell_m / 1000.0)
     for k in range(order.size):
         i = order[k]
         j = receiver[i]
@@ -122,16 +139,18 @@ def erode(height_m, envelope_m, softness, outlet, cell_m, lift, cut, scree):
 
 
 @njit
-def creep(height_m, fixed, share):
-    """Round the slopes: move each free cell `share` of the way to its neighbours' mean."""
-    old = height_m.copy()
-    rows, cols = height_m.shape
-    for r in range(1, rows - 1):
-        for c in range(1, cols - 1):
-            if fixed[r, c]:
-                continue
-            mean = 0.25 * (old[r - 1, c] + old[r + 1, c] + old[r, c - 1] + old[r, c + 1])
-            height_m[r, c] = old[r, c] + share * (mean - old[r, c])
+def erode(height_m, envelope_m, softness, outlet, cell_m, lift, cut, scree, share):
+    """Let the ground rise towards its envelope and rivers cut it, three steps, in place.
+
+    `lift` is the share of the gap to the envelope that is made good in a step, `cut` scales the
+    rivers' work, `scree` is the steepest slope that holds [tangent], `share` is the creep.
+    Finding the drainage is the slow part, so three steps use it.
+    """
+    order, receiver = drainage(height_m, outlet)
+    area = drained_area(order, receiver, cell_m / 1000.0)
+    for _ in range(3):
+        _cut(height_m, envelope_m, softness, order, receiver, area, cell_m, lift, cut, scree)
+        creep(height_m, outlet, share)
 
 
 @njit

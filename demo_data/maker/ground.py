@@ -85,19 +85,18 @@ def _lake(height_m, lake, x, y, half, width, level_m, cell_km):
             kx = (c + 0.5) * cell_km - x
             if abs(kx) > 1.5 * half:
                 continue
-            wx = kx + 0.25 * fractal_noise(kx / 0.8, ky / 0.8, 5, 401)
-            wy = ky + 0.25 * fractal_noise(kx / 0.8, ky / 0.8, 5, 421)
+            wx = kx + 0.5 * fractal_noise(kx / 1.7, ky / 1.7, 6, 401)
+            wy = ky + 0.4 * fractal_noise(kx / 1.7, ky / 1.7, 6, 421)
             ex = wx / half
             ey = wy / width
             d = np.sqrt(ex * ex + ey * ey)
             if d < 1.0:
                 height_m[r, c] = level_m
                 lake[r, c] = True
-            elif d < 1.6:
-                w = smooth((1.6 - d) / 0.6)
-                bank = max(height_m[r, c], level_m + 1.0)
-                height_m[r, c] = bank + w * (min(bank, level_m + 40.0 * (d - 1.0)) - bank)
-                height_m[r, c] = max(height_m[r, c], level_m + 0.5)
+            elif d < 1.25:
+                bank = level_m + 1.0 + 12.0 * (d - 1.0)
+                w = smooth((1.25 - d) / 0.25)
+                height_m[r, c] += w * (bank - height_m[r, c])
 
 
 def sink_lake(height_m):
@@ -176,7 +175,5 @@ def _land_cover(height_m, water, towns, clear, cell_km):
 def make_land_cover(height_m, water):
     """Return land-cover classes (uint8), row 0 north."""
     towns = np.array([places.TOWN, *places.VILLAGES])
-    clear = np.array(
-        [(s[4], s[5], 0.0005 * s[7] + 0.25) for s in places.RUNWAYS + places.AREAS]
-    )
+    clear = np.array([(s[4], s[5], 0.0005 * s[7] + 0.25) for s in places.RUNWAYS + places.AREAS])
     return _land_cover(height_m, water, towns, clear, layout.CELL_M / 1000.0)

@@ -29,7 +29,8 @@ COAST = np.array(
 # Islands: east, north, half width, half height.
 ISLANDS = np.array([[6.3, 40.0, 2.3, 3.4], [9.2, 26.8, 0.9, 1.3], [5.0, 12.0, 1.3, 0.9]])
 
-# Spines of the mountains, one row a stretch: x0, y0, crest0, x1, y1, crest1, half width of the foot.
+# Spines of the mountains, one row a stretch: x0, y0, crest0, x1, y1, crest1, half width at the
+# foot. Crests are those of the envelope; erosion leaves the summits lower.
 SPINES = np.array(
     [
         # the main range, from south to north
@@ -92,9 +93,10 @@ VALLEYS = np.array(
         [35.0, 39.6, 220, 40.5, 42.0, 390, 0.55],
         [40.5, 42.0, 390, 44.5, 43.6, 760, 0.35],
         # Lake valley in the north
-        [13.5, 55.8, 2, 22.0, 54.0, 60, 0.9],
-        [22.0, 54.0, 60, 30.0, 55.0, 185, 0.9],
-        [30.0, 55.0, 185, 37.5, 55.5, 260, 0.6],
+        [13.5, 55.8, 2, 21.5, 54.2, 55, 0.9],
+        [21.5, 54.2, 55, 22.9, 54.2, 114, 0.8],
+        [22.9, 54.2, 114, 30.0, 55.0, 118, 0.9],
+        [30.0, 55.0, 118, 37.5, 55.5, 250, 0.6],
         [37.5, 55.5, 260, 43.0, 56.0, 520, 0.35],
         # South valley
         [15.5, 11.5, 2, 23.0, 14.2, 40, 1.1],
@@ -121,4 +123,4 @@ VALLEYS = np.array(
 # The high plateau: east, north, half width, half height, top.
 PLATEAU = (29.0, 7.2, 3.9, 2.7, 1180.0)
 # The lake: east, north, half length, half width, level.
-LAKE = (26.3, 54.5, 3.0, 0.85, 112.0)
+LAKE = (26.3, 54.55, 3.3, 0.8, 112.0)

@@ -84,3 +84,18 @@ def ridged_noise(x, y, octaves, seed):
         y = 2.03 * y + 31.9
         gain *= 0.5
     return total
+
+
+@njit
+def noise_grid(west, north, rows, cols, cell, width, ridged, octaves, seed):
+    """Return noise with features `width` wide at the cell centres, row 0 north."""
+    out = np.empty((rows, cols))
+    for r in range(rows):
+        y = (north - (r + 0.5) * cell) / width
+        for c in range(cols):
+            x = (west + (c + 0.5) * cell) / width
+            if ridged:
+                out[r, c] = ridged_noise(x, y, octaves, seed)
+            else:
+                out[r, c] = fractal_noise(x, y, octaves, seed)
+    return out

@@ -46,13 +46,13 @@ AREAS = [
      (120.0, "stubble", UNKNOWN, UNKNOWN, UNKNOWN, "Air photograph", "2026-01-30", UNKNOWN)),
     ("ostrell-water", "Ostrell Water", "water", "surveyed", 20.3, 30.3, 70.0, 1500.0,
      (350.0, "water", 0.0, UNKNOWN, UNKNOWN, "Harbour office", "2026-05-06", "2027-05-06")),
-    ("lake-ilvane", "Lake Ilvane", "water", "candidate", 26.3, 54.5, 90.0, 3000.0,
+    ("lake-ilvane", "Lake Ilvane", "water", "candidate", 26.3, 54.55, 92.0, 3000.0,
      (500.0, "water", 0.0, UNKNOWN, UNKNOWN, "Map study", UNKNOWN, UNKNOWN)),
 ]  # fmt: skip
 
 # A place of which hardly anything is known: (id, name, kind, status, east, north)
 POINTS = [
-    ("skerrowen", "Skerrowen Island Pasture", "field", "candidate", 6.9, 37.4),
+    ("skerrowen", "Skerrowen Island Pasture", "field", "candidate", 7.36, 38.51),
 ]
 
 TOWN = (21.7, 29.0, 0.9)  # Ostrell: east, north, radius
@@ -60,9 +60,9 @@ VILLAGES = [(27.3, 29.1, 0.35), (21.2, 39.9, 0.3), (31.6, 55.9, 0.25), (23.6, 13
 
 # Obstacles: (name, type, [(east, north)], height_ft, horizontal and vertical accuracy_ft, date)
 OBSTACLES = [
-    ("Harvane Ridge relay mast", "mast", [(26.05, 34.15)], 165, 50, 10, "2026-02-02"),
+    ("Harvane Ridge relay mast", "mast", [(26.65, 34.18)], 165, 50, 10, "2026-02-02"),
     ("Ostrell broadcast mast", "mast", [(22.9, 27.6)], 410, 20, 3, "2026-05-06"),
-    ("Corravel snow gauge mast", "mast", [(45.6, 43.9)], 60, 250, 50, "2026-01-15"),
+    ("Corravel snow gauge mast", "mast", [(46.36, 44.08)], 60, 250, 50, "2026-01-15"),
     ("Ostrell harbour crane", "crane", [(21.95, 30.0)], 215, 30, 10, "2026-05-06"),
     ("Ostrell spire", "tower", [(21.6, 28.8)], 130, 30, 10, "2026-05-06"),
     ("Tarvane valley power line", "power_line",
@@ -82,12 +82,18 @@ ROUTE = [
     ("Tarvane", 28.4, 30.05, 2500),
     ("Ostrell", 22.0, 30.6, 4500),
     ("Kelmoor", 20.6, 39.3, 5500),
-    ("Ridge valley", 32.0, 39.4, 6500),
+    ("Ridge Valley", 32.0, 39.4, 6500),
     ("Selwarn Pass", 47.6, 44.3, 8500),
     ("Orrendale", 56.6, 41.2, 5500),
 ]
 
 WEATHER = {
+    "light-easterly": {
+        "name": "Light easterly",
+        "valid": "2026-04-20T22:00:00Z",
+        "note": "Invented. Light air off the mountains, little change with height.",
+        "wind": [(0, 85, 3), (2500, 95, 7), (6000, 100, 11), (10000, 105, 15)],
+    },
     "westerly": {
         "name": "Light westerly",
         "valid": "2026-04-21T09:00:00Z",
@@ -110,8 +116,8 @@ WEATHER = {
 }  # fmt: skip
 
 START = {
-    "east": 26.8, "north": 37.9, "altitude_ft": 5500, "track_deg": 265, "aircraft": "vessim-two",
-    "wind": "westerly",
+    "east": 29.3, "north": 37.9, "altitude_ft": 5800, "track_deg": 275, "aircraft": "vessim-two",
+    "wind": "light-easterly",
     "note": "Flying down Ridge Valley towards the sea. Harvane Ridge hides Tarvane Aerodrome; "
-    "the ground beyond the ridge's end is reached round it.",
+    "ground on its far side is reached only round its western end.",
 }  # fmt: skip
