@@ -1,0 +1,167 @@
+"""Nothing false: an independent simulator flies to cells that the footprint claims.
+
+It flies over the bilinear surface of the source file, with speed as a state. 2,000 flights, or
+10,000 with ENGINEOUT_FULL=1; run with `-s` to see the worst.
+"""
+
+from __future__ import annotations
+
+import math
+import os
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from geo.case import GlideCase, Margins, SolveLimits
+from geo.footprint import Footprint, solve
+from geo.terrain import TerrainStore
+from geo.wind import WindProfile
+from perf.polar import Polar
+from tests import real_terrain
+from tests.flown import WORST_M, Score, cells_to_fly, judged
+from tests.source_surface import SourceSurface
+
+FLIGHTS = 10_000 if os.environ.get("ENGINEOUT_FULL") == "1" else 2_000
+DEMO = Path(__file__).parent.parent / "demo_data"
+KT = 1852.0 / 3600.0
+
+# Invented aeroplanes: ratio, best-glide and stall speed [m/s EAS], top speed of the wind policy
+TRAINER = (Polar(33.0, 9.1, 23.0, 750.0), 65.0)
+HEAVY_SINGLE = (Polar(45.0, 10.4, 31.0, 1650.0), 85.0)
+TURBOPROP = (Polar(55.0, 14.5, 36.0, 4200.0), 110.0)
+MOTOR_GLIDER = (Polar(27.0, 26.0, 19.0, 650.0), 60.0)
+
+CALM = WindProfile.calm()
+WESTERLY = WindProfile.from_levels(
+    [(0.0, math.radians(250), 10 * KT), (1500.0, math.radians(280), 22 * KT),
+     (3000.0, math.radians(310), 35 * KT)]
+)  # fmt: skip
+SHEARED = WindProfile.from_levels(
+    [(300.0, math.radians(40), 4 * KT), (900.0, math.radians(80), 25 * KT),
+     (2200.0, math.radians(100), 30 * KT), (4000.0, math.radians(170), 45 * KT)]
+)  # fmt: skip
+BACKING = WindProfile.from_levels(
+    [(0.0, math.radians(350), 8 * KT), (2000.0, math.radians(10), 18 * KT),
+     (5000.0, math.radians(300), 40 * KT)]
+)  # fmt: skip
+BARE = Margins(1.0, 0.0, 0.0, math.radians(30), 30.0, 30.0, 0.0, 0.0)
+USUAL = Margins()
+TIGHT = Margins(0.95, 0.0, 4.0, math.radians(45), 60.0, 150.0, 0.0, 0.0)
+SINKING = Margins(0.9, 3.0 * KT, 10.0, math.radians(20), 60.0, 60.0, 0.5, 0.0)
+
+
+@dataclass(frozen=True)
+class Draw:
+    """One case: where from (share of the terrain's box), how high above the ground, and how."""
+
+    east: float
+    north: float
+    height_m: float
+    track_deg: float | None
+    plane: tuple[Polar, float]
+    wind: WindProfile
+    margins: Margins
+    policy: str = "manual"
+
+
+DRAWS = [
+    Draw(0.45, 0.55, 1100.0, 70.0, TRAINER, WESTERLY, BARE),
+    Draw(0.60, 0.40, 900.0, 200.0, TRAINER, SHEARED, BARE),
+    Draw(0.35, 0.45, 1300.0, None, HEAVY_SINGLE, BACKING, BARE),
+    Draw(0.50, 0.60, 1200.0, 310.0, HEAVY_SINGLE, WESTERLY, TIGHT),
+    Draw(0.55, 0.50, 1000.0, 130.0, TURBOPROP, SHEARED, TIGHT),
+    Draw(0.40, 0.40, 700.0, 20.0, MOTOR_GLIDER, CALM, BARE),
+    Draw(0.50, 0.45, 1400.0, 250.0, TRAINER, SHEARED, USUAL),
+    Draw(0.45, 0.50, 1200.0, 100.0, TRAINER, WESTERLY, SINKING),
+    Draw(0.52, 0.52, 1000.0, 0.0, TRAINER, WESTERLY, BARE, "wind"),
+    Draw(0.42, 0.58, 500.0, 160.0, TRAINER, CALM, BARE),
+]
+
+
+@dataclass(frozen=True)
+class Ground:
+    """One terrain: its folder, its file, its box."""
+
+    folder: Path
+    file: Path
+    box: tuple[float, float, float, float]
+
+
+@pytest.fixture(scope="module")
+def grounds(tmp_path_factory: pytest.TempPathFactory) -> dict[str, Ground]:
+    jacksboro = tmp_path_factory.mktemp("jacksboro")
+    aletsch = tmp_path_factory.mktemp("aletsch")
+    files = {
+        "demo": (DEMO, next((DEMO / "terrain").glob("*.tif"))),
+        "jacksboro": (jacksboro, real_terrain.write_jacksboro(jacksboro)),
+        "aletsch": (aletsch, real_terrain.write_aletsch(aletsch)),
+    }
+    out = {}
+    for name, (folder, file) in files.items():
+        out[name] = Ground(folder, file, TerrainStore(folder).sources[0].bbox)
+    return out
+
+
+def case_of(draw: Draw, ground: Ground, surface: SourceSurface) -> GlideCase:
+    west, south, east, north = ground.box
+    lon, lat = west + draw.east * (east - west), south + draw.north * (north - south)
+    elevation_m = float(surface.height_m(np.array([lon]), np.array([lat]))[0])
+    return GlideCase(
+        lon,
+        lat,
+        elevation_m + draw.height_m,
+        None if draw.track_deg is None else math.radians(draw.track_deg),
+        draw.plane[0],
+        draw.plane[1],
+        draw.policy,
+        draw.wind,
+        margins=draw.margins,
+    )
+
+
+def fly_case(
+    label: str, found: Footprint, surface: SourceSurface, count: int, seed: int, score: Score
+) -> None:
+    cells, near = cells_to_fly(found, count, np.random.default_rng(seed))
+    score.near += near
+    for k, cell in enumerate(cells):
+        # every other flight in a wind worse by the margin: the claim must hold there too
+        against = found.case.margins.wind_error_mps if k % 2 else 0.0
+        score.results.append(judged(label, found, cell, surface, against))
+
+
+@pytest.fixture(scope="module")
+def score(grounds: dict[str, Ground]) -> Score:
+    total = Score()
+    count = math.ceil(1.08 * FLIGHTS / (len(DRAWS) * len(grounds)))  # some have few bent cells
+    for name, ground in grounds.items():
+        surface, store = SourceSurface(ground.file), TerrainStore(ground.folder)
+        for k, draw in enumerate(DRAWS):
+            found = solve(store, case_of(draw, ground, surface), limits=SolveLimits())
+            fly_case(f"{name} {k}", found, surface, count, 100 + k, total)
+    print("\n" + total.report())
+    return total
+
+
+def test_enough_was_flown(score: Score) -> None:
+    # Common practice: the customer's shares: half near an outline, a quarter on bent paths
+    assert len(score.results) >= FLIGHTS
+    assert score.near >= len(score.results) / 2
+    assert sum(result.bends > 0 for result in score.results) >= len(score.results) / 4
+
+
+def test_at_most_one_in_a_thousand_is_false(score: Score) -> None:
+    false = sum(result.is_false for result in score.results)
+    assert false <= len(score.results) / 1000, score.report()
+
+
+def test_none_is_worse_than_fifty_feet(score: Score) -> None:
+    worst_m = min(min(r.arrival_m, r.clearance_m) for r in score.results)
+    assert worst_m >= -WORST_M, score.report()
+
+
+def test_every_flight_passes_over_its_place(score: Score) -> None:
+    # half a cell's diagonal and the sway of the pilot: a claim is about the place, not beside it
+    assert max(result.miss_m for result in score.results) <= 45.0, score.report()
