@@ -8,6 +8,7 @@ const L = /** @type {any} */ (globalThis).L;
 const PANES = /** @type {const} */ ([
   ["shade", 350], ["outline", 410], ["way", 420], ["sites", 600], ["aeroplane", 650],
 ]);
+const SLIVER = 0.04; // of a tile: a box may be wider than its slanting terrain by this much
 const RELIEF = "/api/tiles/relief/{z}/{x}/{y}.png";
 
 export class Chart {
@@ -129,16 +130,20 @@ export class Chart {
  * @param {{bbox: number[]}[]} terrain
  */
 function relief(terrain) {
-  const boxes = terrain.map(({ bbox: [west, south, east, north] }) => L.latLngBounds([south, west], [north, east]));
+  const boxes = terrain.flatMap(({ bbox: [west, south, east, north] }) => [-360, 0, 360].map((turn) =>
+    ({ west: west + turn, east: (east < west ? east + 360 : east) + turn, south, north })));
   const Relief = L.TileLayer.extend({
     createTile(/** @type {any} */ coords, /** @type {any} */ done) {
       const size = this.getTileSize();
       const corner = coords.scaleBy(size);
-      const box = L.latLngBounds(
-        this._map.unproject(corner, coords.z), this._map.unproject(corner.add(size), coords.z));
-      if (boxes.some((known) => known.overlaps(box))) {
-        return L.TileLayer.prototype.createTile.call(this, coords, done);
-      }
+      const { lat: north, lng: west } = this._map.unproject(corner, coords.z);
+      const { lat: south, lng: east } = this._map.unproject(corner.add(size), coords.z);
+      const enough = (/** @type {number} */ shared, /** @type {number} */ tile, /** @type {number} */ box) =>
+        shared > Math.min(tile * SLIVER, box / 2);
+      const known = boxes.some((box) =>
+        enough(Math.min(box.east, east) - Math.max(box.west, west), east - west, box.east - box.west)
+        && enough(Math.min(box.north, north) - Math.max(box.south, south), north - south, box.north - box.south));
+      if (known) return L.TileLayer.prototype.createTile.call(this, coords, done);
       setTimeout(done, 0, null, null);
       return el("div", { class: "no-tile" });
     },

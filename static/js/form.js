@@ -70,7 +70,7 @@ export class Form {
     const field = this.input("track_deg");
     this.input("any_track").checked = track === null;
     field.disabled = track === null;
-    if (track !== null) field.value = String(track);
+    field.value = track === null ? "" : String(track);
   }
 
   /**
@@ -94,6 +94,7 @@ export class Form {
     const wind = readWinds(this.winds);
     const values = NUMBERS.map((name) => this.input(name));
     const track = this.input("any_track").checked ? null : this.input("track_deg");
+    if (track && state.track_deg === null && track.value === "") track.value = "0";
     const odd = [...values, track, ...wind.fields].filter((field) => field && !isNumber(field));
     const masses = this.input("mass_kg");
     this.complain(odd);
@@ -101,7 +102,7 @@ export class Form {
     const mass = isNumber(masses) ? Number(masses.value) : null;
     this.onChange({
       ...Object.fromEntries(values.map((field) => [field.name, Number(field.value)])),
-      track_deg: track === null ? null : Number(track.value || state.track_deg || 0),
+      track_deg: track === null ? null : Number(track.value),
       aircraft: chosen,
       speed_policy: this.input("speed_policy").value,
       mass_kg: sameRecord && mass !== record?.mass_max_kg ? mass : null,

@@ -14,7 +14,7 @@ import { pullable } from "./pull.js";
 import { LatestQueue } from "./queue.js";
 import { footprintRequest } from "./request.js";
 import { ask } from "./service.js";
-import { fromAddress, toAddress } from "./state.js";
+import { fromAddress, tidy, toAddress } from "./state.js";
 import * as status from "./status.js";
 
 /** @typedef {import("./state.js").State} State @typedef {{state: State, detail: "fine" | "coarse"}} Job */
@@ -87,7 +87,7 @@ export class Page {
 
   /** @param {Partial<State>} patch from the sheet */
   changed(patch) {
-    this.state = { ...this.state, ...patch };
+    this.state = tidy({ ...this.state, ...patch });
     this.showState();
     this.solve("fine");
   }
@@ -97,7 +97,7 @@ export class Page {
    * @param {boolean} done
    */
   moved(patch, done) {
-    this.state = { ...this.state, ...patch };
+    this.state = tidy({ ...this.state, ...patch });
     this.form.follow(this.state);
     this.solve(done ? "fine" : "coarse");
     if (done) this.note();
@@ -187,7 +187,7 @@ export class Page {
   /** @param {[number, number] | null} to longitude, latitude */
   askAbout(to) {
     if (!to) return;
-    this.state = { ...this.state, to };
+    this.state = tidy({ ...this.state, to });
     this.note();
     if (!this.footprints.busy) this.asked.ask({ state: this.state, look: true });
   }

@@ -40,7 +40,7 @@ const WORDS = /** @type {const} */ ([
  * @returns {State}
  */
 export function startState(start) {
-  return {
+  return tidy({
     latitude_deg: start.position[1],
     longitude_deg: start.position[0],
     altitude_ft: start.altitude_ft,
@@ -56,6 +56,22 @@ export function startState(start) {
     margins: start.margins ?? {},
     to: null,
     view: null,
+  });
+}
+
+/**
+ * The same state with places as exact as the address keeps them.
+ *
+ * @param {State} state
+ * @returns {State}
+ */
+export function tidy(state) {
+  const { latitude_deg, longitude_deg, to } = state;
+  return {
+    ...state,
+    latitude_deg: round(latitude_deg),
+    longitude_deg: round(longitude_deg),
+    to: to && [round(to[0]), round(to[1])],
   };
 }
 
