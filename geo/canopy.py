@@ -110,7 +110,7 @@ class LandCover:
             i0, i1 = max(i0, 0), min(i1, file.width)
         if j1 > j0 and i1 > i0:
             values = self.canopy_m(self.codes((j0, j1, i0, i1)))
-            kernels.touched(values, u + 0.5 - i0, v + 0.5 - j0, step, canopy_m)
+            kernels.touched(values, j0, i0, u + 0.5, v + 0.5, step, canopy_m)
 
     def codes_at(self, lon_deg: Values, lat_deg: Values) -> NDArray[np.int32]:
         """Return the class code at each place, shape ``(k,)``, NO_DATA off the raster."""

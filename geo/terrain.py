@@ -96,12 +96,17 @@ class TerrainStore:
             for obstacle in obstacles
         ]
         self._obstacles = ObstacleField(found, self.ground_m)
-        self._cache = TileCache(self._build, cache_bytes)
+        self.tiles = TileCache(self._build, cache_bytes)
 
     @property
     def sources(self) -> tuple[TerrainSource, ...]:
         """Every terrain file that is used, the finest first."""
         return tuple(source for layer in self._shown for source in layer)
+
+    @property
+    def cached_bytes(self) -> int:
+        """Bytes of solver cells now kept."""
+        return self.tiles.held_bytes
 
     @property
     def refused(self) -> tuple[TerrainError, ...]:
@@ -156,7 +161,7 @@ class TerrainStore:
         tile_rows = range(row0 // TILE_CELLS, (row0 + n_rows - 1) // TILE_CELLS + 1)
         tile_cols = range(col0 // TILE_CELLS, (col0 + n_cols - 1) // TILE_CELLS + 1)
         keys = [(frame, float(cell_m), row, col) for row in tile_rows for col in tile_cols]
-        tiles = self._cache.get(keys)
+        tiles = self.tiles.get(keys)
         top_m = np.empty((n_rows, n_cols), dtype=np.float32)
         used: set[int] = set()
         for key, tile in tiles.items():

@@ -27,26 +27,38 @@ TOUCH_M = 0.05  # posts this close to a cell count as in it: covers the mapping'
 
 @njit(nogil=True, cache=True, error_model="numpy")
 def segment_top(
-    posts: Posts, u0: float, v0: float, u1: float, v1: float, i: int, j: int, ta: float, tb: float
+    posts: Posts,
+    j0: int,
+    i0: int,
+    u0: float,
+    v0: float,
+    u1: float,
+    v1: float,
+    patch_j: int,
+    patch_i: int,
+    ta: float,
+    tb: float,
 ) -> float:
     """Return the highest value on part of a segment within one patch, NaN where it is void.
 
     The segment runs from (u0, v0) at t = 0 to (u1, v1) at t = 1; the part is ta .. tb, t in 0 .. 1.
+    Row 0 and column 0 of `posts` are post (j0, i0).
     """
-    n_rows, n_cols = posts.shape
-    if i == n_cols - 1 and max(u0, u1) <= i:
-        i -= 1
-    if j == n_rows - 1 and max(v0, v1) <= j:
-        j -= 1
-    if i < 0 or j < 0 or i >= n_cols - 1 or j >= n_rows - 1:
+    last_i, last_j = i0 + posts.shape[1] - 1, j0 + posts.shape[0] - 1
+    if patch_i == last_i and max(u0, u1) <= last_i:
+        patch_i -= 1
+    if patch_j == last_j and max(v0, v1) <= last_j:
+        patch_j -= 1
+    if patch_i < i0 or patch_j < j0 or patch_i >= last_i or patch_j >= last_j:
         return math.nan
+    i, j = patch_i - i0, patch_j - j0
     corner = float(posts[j, i])
     east = float(posts[j, i + 1]) - corner
     north = float(posts[j + 1, i]) - corner
     twist = float(posts[j + 1, i + 1]) - corner - east - north
     if math.isnan(twist):
         return math.nan
-    du, dv, start_u, start_v = u1 - u0, v1 - v0, u0 - i, v0 - j
+    du, dv, start_u, start_v = u1 - u0, v1 - v0, u0 - patch_i, v0 - patch_j
     # f(t) = base + slope t + bend t^2
     base = corner + east * start_u + north * start_v + twist * start_u * start_v
     slope = east * du + north * dv + twist * (start_u * dv + start_v * du)
@@ -59,7 +71,9 @@ def segment_top(
 
 
 @njit(nogil=True, cache=True, error_model="numpy")
-def edge_top(posts: Posts, u0: float, v0: float, u1: float, v1: float) -> tuple[float, int]:
+def edge_top(
+    posts: Posts, j0: int, i0: int, u0: float, v0: float, u1: float, v1: float
+) -> tuple[float, int]:
     """Return (highest valid value, 1 if any of it is void else 0) along a straight edge."""
     if not (math.isfinite(u0) and math.isfinite(u1) and math.isfinite(v0) and math.isfinite(v1)):
         return NO_TOP, 1
@@ -76,7 +90,7 @@ def edge_top(posts: Posts, u0: float, v0: float, u1: float, v1: float) -> tuple[
         tb = min(next_u, next_v, 1.0)
         middle = 0.5 * (ta + tb)
         i, j = math.floor(u0 + middle * du), math.floor(v0 + middle * dv)
-        value = segment_top(posts, u0, v0, u1, v1, i, j, ta, tb)
+        value = segment_top(posts, j0, i0, u0, v0, u1, v1, j, i, ta, tb)
         if math.isnan(value):
             void = 1
         elif value > top:
@@ -114,7 +128,14 @@ def raise_to(top: Values, void: Flags, row: int, col: int, value: float, missing
 
 @njit(nogil=True, cache=True, error_model="numpy")
 def walk_edges(
-    posts: Posts, lattice_u: Values, lattice_v: Values, step: int, top: Values, void: Flags
+    posts: Posts,
+    j0: int,
+    i0: int,
+    lattice_u: Values,
+    lattice_v: Values,
+    step: int,
+    top: Values,
+    void: Flags,
 ) -> None:
     """Raise every cell to the highest point along its edges; mark those that touch a void.
 
@@ -122,6 +143,9 @@ def walk_edges(
     ----------
     posts
         Heights [m], shape ``(n, m)``, NaN where void.
+    j0, i0
+        Post that row 0 and column 0 of `posts` are. Coordinates are never shifted by it, so that
+        the same cell gets the same bits whatever is read with it.
     lattice_u, lattice_v
         Post coordinates of every `step`-th cell corner, shape ``(rows/step + 1, cols/step + 1)``.
     step
@@ -136,7 +160,9 @@ def walk_edges(
     fill_row(lattice_v, 0, step, v_row)
     for row in range(n_rows + 1):
         for col in range(n_cols):
-            value, missing = edge_top(posts, u_row[col], v_row[col], u_row[col + 1], v_row[col + 1])
+            value, missing = edge_top(
+                posts, j0, i0, u_row[col], v_row[col], u_row[col + 1], v_row[col + 1]
+            )
             raise_to(top, void, row, col, value, missing)
             raise_to(top, void, row - 1, col, value, missing)
         if row == n_rows:
@@ -144,7 +170,9 @@ def walk_edges(
         fill_row(lattice_u, row + 1, step, u_next)
         fill_row(lattice_v, row + 1, step, v_next)
         for col in range(n_cols + 1):
-            value, missing = edge_top(posts, u_row[col], v_row[col], u_next[col], v_next[col])
+            value, missing = edge_top(
+                posts, j0, i0, u_row[col], v_row[col], u_next[col], v_next[col]
+            )
             raise_to(top, void, row, col, value, missing)
             raise_to(top, void, row, col - 1, value, missing)
         u_row, u_next = u_next, u_row
@@ -158,6 +186,8 @@ def scatter_posts(
     lattice_y: Values,
     step: int,
     touch: float,
+    row0: int,
+    col0: int,
     top: Values,
     void: Flags,
 ) -> None:
@@ -173,6 +203,8 @@ def scatter_posts(
         Posts from one point of the lattice to the next.
     touch
         Posts outside a cell by no more than this [cells] count as in it.
+    row0, col0
+        Cell that row 0 and column 0 of `top` are.
     top, void
         Float64 and uint8, shape ``(rows, cols)``, changed in place.
     """
@@ -184,14 +216,15 @@ def scatter_posts(
         fill_row(lattice_y, j, step, ys)
         for i in range(n_cols):
             x, y = xs[i], ys[i]
-            if not (-1.0 < x < top.shape[1] + 1.0 and -1.0 < y < top.shape[0] + 1.0):
+            in_rows = row0 - 1.0 < y < row0 + top.shape[0] + 1.0
+            if not (in_rows and col0 - 1.0 < x < col0 + top.shape[1] + 1.0):
                 continue
             value, missing = float(posts[j, i]), 0
             if math.isnan(value):
                 value, missing = NO_TOP, 1
             for row in range(math.floor(y - touch), math.floor(y + touch) + 1):
                 for col in range(math.floor(x - touch), math.floor(x + touch) + 1):
-                    raise_to(top, void, row, col, value, missing)
+                    raise_to(top, void, row - row0, col - col0, value, missing)
 
 
 @njit(nogil=True, cache=True, error_model="numpy")
@@ -258,13 +291,17 @@ def sample(posts: Posts, u: Values, v: Values, out: Values) -> None:
 
 
 @njit(nogil=True, cache=True, error_model="numpy")
-def touched(values: Posts, lattice_u: Values, lattice_v: Values, step: int, out: Posts) -> None:
+def touched(
+    values: Posts, j0: int, i0: int, lattice_u: Values, lattice_v: Values, step: int, out: Posts
+) -> None:
     """Raise `out` to the largest value of the pixels that each cell touches.
 
     Parameters
     ----------
     values
         One number per pixel, shape ``(n, m)``; pixel (j, i) reaches from (j, i) to (j+1, i+1).
+    j0, i0
+        Pixel that row 0 and column 0 of `values` are.
     lattice_u, lattice_v
         Pixel coordinates of every `step`-th cell corner.
     step
@@ -287,10 +324,10 @@ def touched(values: Posts, lattice_u: Values, lattice_v: Values, step: int, out:
             high = max(v_row[k], v_row[k + 1], v_next[k], v_next[k + 1])
             if not (math.isfinite(east - west) and math.isfinite(high - low)):
                 continue
-            i0, i1 = max(math.floor(west + SKIN), 0), math.floor(east - SKIN) + 1
-            j0, j1 = max(math.floor(low + SKIN), 0), math.floor(high - SKIN) + 1
-            for j in range(j0, min(j1, values.shape[0])):
-                for i in range(i0, min(i1, values.shape[1])):
+            i1, i2 = math.floor(west + SKIN) - i0, math.floor(east - SKIN) + 1 - i0
+            j1, j2 = math.floor(low + SKIN) - j0, math.floor(high - SKIN) + 1 - j0
+            for j in range(max(j1, 0), min(j2, values.shape[0])):
+                for i in range(max(i1, 0), min(i2, values.shape[1])):
                     out[row, k] = max(out[row, k], values[j, i])
 
 
@@ -360,11 +397,11 @@ def warm_up_terrain() -> None:
     posts = np.zeros((3, 3), dtype=np.float32)
     lattice = np.zeros((2, 2))
     top, void = np.full((2, 2), NO_TOP), np.zeros((2, 2), dtype=np.uint8)
-    walk_edges(posts, lattice, lattice, 2, top, void)
-    scatter_posts(posts, lattice, lattice, 2, 0.01, top, void)
+    walk_edges(posts, 0, 0, lattice, lattice, 2, top, void)
+    scatter_posts(posts, lattice, lattice, 2, 0.01, 0, 0, top, void)
     merge(top, void, np.full((2, 2), NO_TOP), np.zeros((2, 2), dtype=np.uint8))
     cells = finish(top, void)
-    touched(posts, lattice, lattice, 2, cells)
+    touched(posts, 0, 0, lattice, lattice, 2, cells)
     one = np.zeros(1)
     raise_places(one, one, one, one, one, 1.0, one)
     raise_discs(cells, np.zeros(1), np.zeros(1), np.ones(1), np.zeros(1))

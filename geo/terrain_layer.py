@@ -172,12 +172,12 @@ class Layer:
     ) -> tuple[Values, Values]:
         """Return post coordinates u (column), v (row) of places, continuous round `lon_ref_deg`."""
         if self.per_degree:
-            ref = self.centre_lon_deg + _half_turn(lon_ref_deg - self.centre_lon_deg)
-            lon_deg = ref + _half_turn(lon_deg - lon_ref_deg)
+            lon_ref_deg += _turns(self.centre_lon_deg - lon_ref_deg)
+            lon_deg = lon_deg + _turns(lon_ref_deg - lon_deg)
         pair = transformers(self.first.crs)
         x, y = (lon_deg, lat_deg) if pair is None else pair[0].transform(lon_deg, lat_deg)
         if pair is not None and self.per_degree:
-            x = lon_deg + _half_turn(np.asarray(x) - lon_deg)
+            x = np.asarray(x) + _turns(lon_deg - np.asarray(x))
         inverse = ~self.first.transform
         u = inverse.a * x + inverse.b * y + (inverse.c - 0.5)
         v = inverse.d * x + inverse.e * y + (inverse.f - 0.5)
@@ -301,6 +301,11 @@ def meets(bbox: Bbox, lon_deg: Values, lat_deg: Values) -> bool:
     apart = abs(float(_half_turn(west + wide - middle)))
     in_latitude = south - 0.02 <= lat_deg.max() and lat_deg.min() <= north + 0.02
     return bool(apart <= wide + half + 0.02 and in_latitude)
+
+
+def _turns(angle_deg: ArrayLike) -> Any:
+    """Return the whole turns in an angle [deg]: adding them to a longitude keeps its bits."""
+    return 360.0 * np.round(np.asarray(angle_deg, dtype=np.float64) / 360.0)
 
 
 def _half_turn(angle_deg: ArrayLike) -> Values:

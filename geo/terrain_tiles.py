@@ -95,17 +95,19 @@ class CellBlock:
         top = np.full((self.n_rows, self.n_cols), kernels.NO_TOP)
         void = np.zeros(top.shape, dtype=np.uint8)
         posts = layer.read(box)
-        kernels.walk_edges(posts, u - box[2], v - box[0], self.step, top, void)
+        kernels.walk_edges(posts, box[0], box[2], u, v, self.step, top, void)
         step = lattice_step(layer.cell_m)
         i = np.arange(box[2], box[3] + step, step, dtype=np.float64)
         j = np.arange(box[0], box[1] + step, step, dtype=np.float64)
         x_m, y_m = self.frame.to_xy_m(*layer.to_lonlat(*np.meshgrid(i, j)))
         kernels.scatter_posts(
             posts,
-            x_m / self.cell_m - self.col0,
-            y_m / self.cell_m - self.row0,
+            x_m / self.cell_m,
+            y_m / self.cell_m,
             step,
             kernels.TOUCH_M / self.cell_m,
+            self.row0,
+            self.col0,
             top,
             void,
         )
@@ -175,7 +177,7 @@ class TileCache:
         build: Callable[[list[TileKey]], dict[TileKey, Tile]],
         max_bytes: int = CACHE_BYTES,
     ) -> None:
-        self._build = build
+        self.build = build
         self._max_bytes = max_bytes
         self._bytes = 0
         self._tiles: OrderedDict[TileKey, Tile] = OrderedDict()
@@ -222,7 +224,7 @@ class TileCache:
         """Build tiles, keep them, and let those who wait go on, also after a failure."""
         built: dict[TileKey, Tile] = {}
         try:
-            built = self._build(keys)
+            built = self.build(keys)
         finally:
             with self._lock:
                 for key, tile in built.items():

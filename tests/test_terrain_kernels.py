@@ -22,14 +22,15 @@ def tops_of(posts, matrix, shift, n_rows, n_cols, step=2):
     void = np.zeros(top.shape, dtype=np.uint8)
     x, y = np.meshgrid(np.arange(0.0, n_cols + 1, step), np.arange(0.0, n_rows + 1, step))
     (a, b), (c, d) = matrix
-    kernels.walk_edges(posts, a * x + b * y + shift[0], c * x + d * y + shift[1], step, top, void)
+    u, v = a * x + b * y + shift[0], c * x + d * y + shift[1]
+    kernels.walk_edges(posts, 0, 0, u, v, step, top, void)
     i, j = np.meshgrid(
         np.arange(0.0, posts.shape[1] + step, step), np.arange(0.0, posts.shape[0] + step, step)
     )
     back = np.linalg.inv(matrix)
     u, v = i - shift[0], j - shift[1]
     xs, ys = back[0, 0] * u + back[0, 1] * v, back[1, 0] * u + back[1, 1] * v
-    kernels.scatter_posts(posts, xs, ys, step, TOUCH, top, void)
+    kernels.scatter_posts(posts, xs, ys, step, TOUCH, 0, 0, top, void)
     return top, void
 
 
@@ -63,7 +64,7 @@ def grids(draw):
     return posts.astype(np.float32), matrix, shift
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=40, deadline=None)
 @given(grids())
 def test_top_is_the_highest_point_of_every_cell(grid):
     posts, matrix, shift = grid
@@ -99,11 +100,11 @@ def touches_void(posts, matrix, shift, row, col):
 
 def test_the_vertex_of_the_parabola_along_an_edge_is_found():
     posts = np.array([[0.0, 100.0], [100.0, 0.0]], dtype=np.float32)
-    top, void = kernels.edge_top(posts, 0.25, 0.25, 0.75, 0.75)
+    top, void = kernels.edge_top(posts, 0, 0, 0.25, 0.25, 0.75, 0.75)
     # Derived: along u = v the surface is 200 t (1 - t): 50 at t = 1/2, 37.5 at both ends.
     assert top == pytest.approx(50.0, abs=1e-9)
     assert void == 0
-    top, _ = kernels.edge_top(posts, 0.25, 0.75, 0.75, 0.25)
+    top, _ = kernels.edge_top(posts, 0, 0, 0.25, 0.75, 0.75, 0.25)
     assert top == pytest.approx(62.5, abs=1e-9)  # Derived: 100 - 200 t (1 - t), highest at ends
 
 
@@ -122,7 +123,7 @@ def test_a_ridge_of_a_coarse_source_is_not_lowered():
 
 @pytest.mark.parametrize("ends", [(0.5, 0.5, math.nan, 0.5), (math.inf, 0.0, 0.0, 0.0)])
 def test_an_edge_without_a_place_is_void(ends):
-    assert kernels.edge_top(np.zeros((3, 3), dtype=np.float32), *ends) == (kernels.NO_TOP, 1)
+    assert kernels.edge_top(np.zeros((3, 3), dtype=np.float32), 0, 0, *ends) == (kernels.NO_TOP, 1)
 
 
 @given(st.integers(0, 2**31))
@@ -166,10 +167,10 @@ def test_touched_takes_every_pixel_under_the_cell():
     values[2, 3] = 20.0
     x, y = np.meshgrid(np.arange(0.0, 7.0), np.arange(0.0, 7.0))
     exact = np.zeros((6, 6), dtype=np.float32)
-    kernels.touched(values, x, y, 1, exact)
+    kernels.touched(values, 0, 0, x, y, 1, exact)
     assert np.array_equal(exact, values)  # Derived: cells that are pixels touch no other pixel
     moved = np.zeros((6, 6), dtype=np.float32)
-    kernels.touched(values, x + 0.5, y - 0.25, 1, moved)
+    kernels.touched(values, 0, 0, x + 0.5, y - 0.25, 1, moved)
     assert np.argwhere(moved == 20.0).tolist() == [[2, 2], [2, 3], [3, 2], [3, 3]]
 
 
