@@ -105,11 +105,14 @@ def room_to_lose(answer: Footprint, row: int, col: int) -> bool:
     number = ray_id - int(labels.anchors[anchor, k.OFFSET])
     state = k.replay(glide.air, labels.par, labels.run.shape[1], labels.anchors, anchor, number)
     t = k.nearest_on_ray(state, row, col)
-    arc = np.zeros(5)
-    arc[0], arc[1] = state[k.SX] + t * state[k.DX], state[k.SY] + t * state[k.DY]
-    arc[2] = labels.alt_m[row, col]
-    k.heading_for(glide.air, labels.par, arc[2], state[k.DX], state[k.DY], arc[3:5])
-    return bool(k.has_room(labels.top_m, glide.air, labels.par, arc, _need_m(answer, row, col)))
+    circle = np.zeros(k.N_ANCHOR)
+    circle[k.AX] = state[k.SX] + t * state[k.DX]
+    circle[k.AY] = state[k.SY] + t * state[k.DY]
+    circle[k.AZ], circle[k.STEP], circle[k.TURNS] = labels.alt_m[row, col], 0.1, 1.0
+    heading = circle[k.HX : k.HY + 1]
+    k.heading_for(glide.air, labels.par, circle[k.AZ], state[k.DX], state[k.DY], heading)
+    need = _need_m(answer, row, col)
+    return bool(k.has_room(labels.top_m, glide.air, labels.par, circle, need))
 
 
 def _unlabelled(answer: Footprint, lon: float, lat: float, ground: float) -> Explanation:

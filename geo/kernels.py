@@ -32,10 +32,14 @@ JUMP_M, ROOM_M, DETOUR_CELLS, N_PAR = 10, 11, 12, 13
 TAS, AIR_SPEED, WIND_X, WIND_Y = 0, 1, 2, 3
 
 # anchors[a, ...]; TURNS is 0 where any heading may be taken without a turn
-AX, AY, AZ, HX, HY, SIDE, STEP, COUNT, OFFSET, PARENT, TURNS, N_ANCHOR = range(12)
+AX, AY, AZ, HX, HY, SIDE, STEP, COUNT, OFFSET, PARENT, TURNS, FOUND, N_ANCHOR = range(13)
 
 # state[...]: a ray's start: place, formula altitude, altitude cap, unit track, track index
-SX, SY, SZ, CAP, DX, DY, TRACK, USABLE, N_STATE = range(9)
+SX, SY, SZ, CAP, DX, DY, TRACK, N_STATE = range(8)
+
+# arc[...]: x, y, z, heading x, heading y, then the constants of its steps
+ADVANCE, SECONDS, LOSS, WX, WY, Z_FROM, SPEED, WX_PER_M, WY_PER_M = range(5, 14)
+COS_HALF, SIN_HALF, SHEAR_S, DIVE, N_ARC = range(14, 19)
 
 BLOCK_RAYS = 8  # neighbouring rays tried together once one of them finds new ground
 NO_LIMIT = 1 << 30  # as an allowance: never give up
@@ -155,53 +159,69 @@ def _cast(
 
 
 @njit(cache=True, nogil=True)
-def _ray_start(air: Any_, par: Any_, n_tracks: int, arc: Any_, dive: float, state: Any_) -> None:
-    """Fill `state` with the ray that leaves the arc (x, y, z, hx, hy) here, wings level."""
-    here = np.empty(4)
-    _air_at(air, par, arc[2], here)
-    gx = here[AIR_SPEED] * arc[3] + here[WIND_X]
-    gy = here[AIR_SPEED] * arc[4] + here[WIND_Y]
-    speed = sqrt(gx * gx + gy * gy)
-    state[USABLE] = 0.0
-    if speed < 1e-6:
-        return
-    state[DX], state[DY] = gx / speed, gy / speed
-    # against a wind above the airspeed a track has two headings; the table holds the faster one
-    if state[DX] * arc[3] + state[DY] * arc[4] <= 0.0:
-        return
-    state[SX], state[SY], state[SZ], state[CAP] = arc[0], arc[1], arc[2], arc[2] - dive
-    turns = atan2(state[DX], state[DY]) / (2.0 * np.pi)
-    state[TRACK] = (turns - floor(turns)) * n_tracks
-    state[USABLE] = 1.0
+def _begin_arc(air: Any_, par: Any_, anchor: Any_, z: float, arc: Any_) -> None:
+    """Write the constants of an arc's steps at altitude `z`; they hold for one table level."""
+    here, below = np.empty(4), np.empty(4)
+    _air_at(air, par, z, here)
+    _air_at(air, par, z - par[LEVEL_STEP_M], below)
+    v, step = here[TAS], anchor[STEP]
+    radius_m = v * v / (GRAVITY_MPS2 * par[BANK_SIN])
+    seconds = step * v * sqrt(par[BANK_COS]) / (GRAVITY_MPS2 * par[BANK_SIN])
+    turning = anchor[TURNS]  # 0: any heading, no turn charged
+    arc[ADVANCE] = turning * radius_m * step / par[CELL_M]
+    arc[SECONDS] = turning * seconds / par[CELL_M]
+    arc[LOSS] = turning * (
+        radius_m * step / (par[RATIO] * par[BANK_COS]) + par[DOWNDRAFT_MPS] * seconds
+    )
+    arc[WX], arc[WY], arc[Z_FROM], arc[SPEED] = here[WIND_X], here[WIND_Y], z, here[AIR_SPEED]
+    arc[WX_PER_M] = (here[WIND_X] - below[WIND_X]) / par[LEVEL_STEP_M]
+    arc[WY_PER_M] = (here[WIND_Y] - below[WIND_Y]) / par[LEVEL_STEP_M]
+    arc[COS_HALF], arc[SIN_HALF] = np.cos(0.5 * step), np.sin(0.5 * step) * anchor[SIDE]
+    arc[SHEAR_S] = v / GRAVITY_MPS2
+    dive = v * v * (1.0 / par[BANK_COS] - 1.0) / (2.0 * GRAVITY_MPS2)
+    arc[DIVE] = max(arc[DIVE], turning * dive)
 
 
 @njit(cache=True, nogil=True)
-def _arc_step(air: Any_, par: Any_, arc: Any_, side: float, step: float) -> None:
-    """Turn the arc state (x, y, z, hx, hy) by `step` [rad] to a side in the moving air."""
-    here, below = np.empty(4), np.empty(4)
-    _air_at(air, par, arc[2], here)
-    v = here[TAS]
-    radius_m = v * v / (GRAVITY_MPS2 * par[BANK_SIN])
-    seconds = step * v * sqrt(par[BANK_COS]) / (GRAVITY_MPS2 * par[BANK_SIN])
-    cos_h, sin_h = np.cos(0.5 * step), np.sin(0.5 * step) * side
+def _new_arc(air: Any_, par: Any_, anchor: Any_) -> Any_:
+    """Return the state of an arc that begins at an anchor: x, y, z, heading, constants."""
+    arc = np.zeros(N_ARC)
+    arc[:5] = anchor[:5]
+    _begin_arc(air, par, anchor, arc[2], arc)
+    return arc
+
+
+@njit(cache=True, nogil=True)
+def _arc_step(air: Any_, par: Any_, anchor: Any_, arc: Any_) -> None:
+    """Turn by one step in the moving air."""
+    if arc[2] < arc[Z_FROM] - par[LEVEL_STEP_M]:
+        _begin_arc(air, par, anchor, arc[2], arc)
+    cos_h, sin_h = arc[COS_HALF], arc[SIN_HALF]
     hx, hy = arc[3] * cos_h + arc[4] * sin_h, arc[4] * cos_h - arc[3] * sin_h
-    arc[0] += (radius_m * step * hx + here[WIND_X] * seconds) / par[CELL_M]
-    arc[1] += (radius_m * step * hy + here[WIND_Y] * seconds) / par[CELL_M]
-    loss = radius_m * step / (par[RATIO] * par[BANK_COS]) + par[DOWNDRAFT_MPS] * seconds
-    _air_at(air, par, arc[2] - loss, below)
-    gain = (below[WIND_X] - here[WIND_X]) * hx + (below[WIND_Y] - here[WIND_Y]) * hy
-    if gain > 0.0:  # the headwind falls off below: keeping the speed costs height
-        loss += gain * v / GRAVITY_MPS2
-    arc[2] -= loss
+    drop = arc[2] - arc[Z_FROM]
+    arc[0] += arc[ADVANCE] * hx + (arc[WX] + drop * arc[WX_PER_M]) * arc[SECONDS]
+    arc[1] += arc[ADVANCE] * hy + (arc[WY] + drop * arc[WY_PER_M]) * arc[SECONDS]
+    fade = -(arc[WX_PER_M] * hx + arc[WY_PER_M] * hy) * arc[SHEAR_S]
+    # a headwind that falls off below costs height to keep the speed; nothing is credited
+    arc[2] -= arc[LOSS] * (1.0 + max(fade, 0.0))
     arc[3], arc[4] = hx * cos_h + hy * sin_h, hy * cos_h - hx * sin_h
 
 
 @njit(cache=True, nogil=True)
-def dive_m(air: Any_, par: Any_, z: float) -> float:
-    """Return the height [m] that it takes to speed up from v to v sqrt(n) at altitude `z` [m]."""
-    here = np.empty(4)
-    _air_at(air, par, z, here)
-    return here[TAS] * here[TAS] * (1.0 / par[BANK_COS] - 1.0) / (2.0 * GRAVITY_MPS2)
+def _ray_start(arc: Any_, n_tracks: int, state: Any_) -> bool:
+    """Write the ray that leaves the arc here, wings level; False where no track is held."""
+    drop = arc[2] - arc[Z_FROM]
+    gx = arc[SPEED] * arc[3] + arc[WX] + drop * arc[WX_PER_M]
+    gy = arc[SPEED] * arc[4] + arc[WY] + drop * arc[WY_PER_M]
+    speed = sqrt(gx * gx + gy * gy)
+    # against a wind above the airspeed a track has two headings; the table holds the faster one
+    if speed < 1e-6 or gx * arc[3] + gy * arc[4] <= 0.0:
+        return False
+    state[DX], state[DY] = gx / speed, gy / speed
+    state[SX], state[SY], state[SZ], state[CAP] = arc[0], arc[1], arc[2], arc[2] - arc[DIVE]
+    turns = atan2(gx, gy) / (2.0 * np.pi)
+    state[TRACK] = (turns - floor(turns)) * n_tracks
+    return True
 
 
 @njit(cache=True, nogil=True)
@@ -223,66 +243,58 @@ def fan(
     `thorough` casts all rays to their end; otherwise one ray of each block is tried first.
     """
     anchor = anchors[a]
-    n, turning, offset = int(anchor[COUNT]), anchor[TURNS] > 0.0, int(anchor[OFFSET])
-    arc = anchor[:5].copy()
-    dive = dive_m(air, par, arc[2]) if turning else 0.0
-    states = np.empty((BLOCK_RAYS, N_STATE))
-    allowance = NO_LIMIT if thorough else int(par[DETOUR_CELLS])
+    n, offset = int(anchor[COUNT]), int(anchor[OFFSET])
+    arc, n_tracks = _new_arc(air, par, anchor), run.shape[1]
+    arcs, state = np.empty((BLOCK_RAYS, N_ARC)), np.empty(N_STATE)
+    half = int(np.pi / anchor[STEP]) if anchor[TURNS] > 0.0 else n
     n_touched, k, open_arc = 0, 0, True
-    n_half = int(np.pi / anchor[STEP]) if anchor[STEP] > 0.0 else n
     while k < n and open_arc:
         m = 0
         while m < BLOCK_RAYS and k + m < n:
-            if not _clear(top, par, arc[0], arc[1], arc[2] - dive):
+            if not _clear(top, par, arc[0], arc[1], arc[2] - arc[DIVE]):
                 open_arc = False
                 break
-            _ray_start(air, par, run.shape[1], arc, dive, states[m])
+            arcs[m] = arc
             m += 1
-            if turning:
-                _arc_step(air, par, arc, anchor[SIDE], anchor[STEP])
-            else:
-                _turn_only(arc, anchor[SIDE], anchor[STEP])
-        eager = thorough and k <= n_half
-        if not eager and thorough:
-            allowance = int(par[DETOUR_CELLS])
-        first = m // 2
-        before = n_touched
-        if m > 0 and states[first, USABLE] > 0.0:
-            n_touched = _cast(
-                top, alt, ray, run, par, states[first], offset + k + first, offset,
-                allowance, touched, n_touched,
-            )  # fmt: skip
-        if eager or n_touched > before:
-            for j in range(m):
-                if j != first and states[j, USABLE] > 0.0:
-                    n_touched = _cast(
-                        top, alt, ray, run, par, states[j], offset + k + j, offset,
-                        allowance, touched, n_touched,
-                    )  # fmt: skip
+            _arc_step(air, par, anchor, arc)
+        eager = thorough and k <= half
+        allowance = NO_LIMIT if eager else int(par[DETOUR_CELLS])
+        first, before = m // 2, n_touched
+        for j in range(m):
+            # the middle ray goes first; the others follow where it has found new ground
+            q = first if j == 0 else (j - 1 if j <= first else j)
+            if j == 1 and not eager and n_touched == before:
+                break
+            if _ray_start(arcs[q], n_tracks, state):
+                n_touched = _cast(
+                    top, alt, ray, run, par, state, offset + k + q, offset, allowance,
+                    touched, n_touched,
+                )  # fmt: skip
         k += m
     return n_touched
 
 
 @njit(cache=True, nogil=True)
-def _turn_only(arc: Any_, side: float, step: float) -> None:
-    cos, sin = np.cos(step), np.sin(step) * side
-    arc[3], arc[4] = arc[3] * cos + arc[4] * sin, arc[4] * cos - arc[3] * sin
+def starts(air: Any_, par: Any_, n_tracks: int, anchors: Any_, a: int, count: int) -> Any_:
+    """Return the starts of the first `count` rays of an anchor, shape ``(count, N_STATE)``.
+
+    Digit for digit as the fan cast them; NaN where no track is held.
+    """
+    arc = _new_arc(air, par, anchors[a])
+    out = np.full((count, N_STATE), np.nan)
+    for k in range(count):
+        _ray_start(arc, n_tracks, out[k])
+        _arc_step(air, par, anchors[a], arc)
+    return out
 
 
 @njit(cache=True, nogil=True)
 def replay(air: Any_, par: Any_, n_tracks: int, anchors: Any_, a: int, k: int) -> Any_:
     """Return the start of ray `k` of anchor `a` again, digit for digit as the fan cast it."""
-    anchor = anchors[a]
-    arc = anchor[:5].copy()
-    turning = anchor[TURNS] > 0.0
-    dive = dive_m(air, par, arc[2]) if turning else 0.0
+    arc, state = _new_arc(air, par, anchors[a]), np.full(N_STATE, np.nan)
     for _ in range(k):
-        if turning:
-            _arc_step(air, par, arc, anchor[SIDE], anchor[STEP])
-        else:
-            _turn_only(arc, anchor[SIDE], anchor[STEP])
-    state = np.empty(N_STATE)
-    _ray_start(air, par, n_tracks, arc, dive, state)
+        _arc_step(air, par, anchors[a], arc)
+    _ray_start(arc, n_tracks, state)
     return state
 
 
@@ -422,6 +434,7 @@ def spread(
                 anchor[OFFSET] += anchor[COUNT]
             anchor[SIDE] = 1.0 if bit == 1 else -1.0
             n_touched = fan(top, alt, ray, run, air, par, anchors, n_anchors, touched, False)
+            anchor[FOUND] = n_touched
             n_anchors += 1
             for j in range(min(n_touched, touched.shape[0])):
                 tr, tc = touched[j] // cols, touched[j] % cols
@@ -451,13 +464,10 @@ def fly_on(
 
     False where the track cannot be held or the clearance is not kept on the way.
     """
-    state, here = np.empty(N_STATE), np.empty(4)
-    _ray_start(air, par, run.shape[1], anchor[:5], 0.0, state)
-    if state[USABLE] == 0.0:
+    state, arc = np.empty(N_STATE), _new_arc(air, par, anchor)
+    if not _ray_start(arc, run.shape[1], state):
         return False
-    _air_at(air, par, anchor[AZ], here)
-    gx = here[AIR_SPEED] * anchor[HX] + here[WIND_X]
-    gy = here[AIR_SPEED] * anchor[HY] + here[WIND_Y]
+    gx, gy = arc[SPEED] * arc[3] + arc[WX], arc[SPEED] * arc[4] + arc[WY]
     distance = sqrt(gx * gx + gy * gy) * seconds / par[CELL_M]
     pieces = int(distance * 4.0) + 1
     for i in range(pieces + 1):
@@ -476,33 +486,17 @@ def alt_along(run: Any_, par: Any_, state: Any_, distance: float) -> float:
 
 
 @njit(cache=True, nogil=True)
-def starts(air: Any_, par: Any_, n_tracks: int, anchors: Any_, a: int, count: int) -> Any_:
-    """Return the starts of the first `count` rays of an anchor, shape ``(count, N_STATE)``."""
-    anchor = anchors[a]
-    arc, turning = anchor[:5].copy(), anchor[TURNS] > 0.0
-    dive = dive_m(air, par, arc[2]) if turning else 0.0
-    out = np.empty((count, N_STATE))
-    for k in range(count):
-        _ray_start(air, par, n_tracks, arc, dive, out[k])
-        if turning:
-            _arc_step(air, par, arc, anchor[SIDE], anchor[STEP])
-        else:
-            _turn_only(arc, anchor[SIDE], anchor[STEP])
-    return out
-
-
-@njit(cache=True, nogil=True)
-def has_room(top: Any_, air: Any_, par: Any_, arc: Any_, to_m: float) -> bool:
-    """Return whether a drifting circle, either way round, loses height from the arc state down to
-    `to_m` [m] and keeps the clearance. Source: the turn of `_arc_step`.
+def has_room(top: Any_, air: Any_, par: Any_, anchor: Any_, to_m: float) -> bool:
+    """Return whether a drifting circle, either way round, loses height from an anchor down to
+    `to_m` [m] and keeps the clearance.
     """
     for side in (1.0, -1.0):
-        here = arc.copy()
-        dive = dive_m(air, par, here[2]) if here[2] > to_m else 0.0
+        anchor[SIDE] = side
+        arc = _new_arc(air, par, anchor)
         clear = True
-        while here[2] > to_m and clear:
-            _arc_step(air, par, here, side, 0.1)
-            clear = _clear(top, par, here[0], here[1], max(here[2] - dive, to_m))
+        while arc[2] > to_m and clear:
+            _arc_step(air, par, anchor, arc)
+            clear = _clear(top, par, arc[0], arc[1], max(arc[2] - arc[DIVE], to_m))
         if clear:
             return True
     return False

@@ -92,7 +92,7 @@ def _nearest_root_leg(glide: Glide, labels: Labels, anchor: int, x: float, y: fl
     ahead_x, ahead_y = x - states[:, k.SX], y - states[:, k.SY]
     along = ahead_x * states[:, k.DX] + ahead_y * states[:, k.DY]
     across = np.abs(ahead_x * states[:, k.DY] - ahead_y * states[:, k.DX])
-    across[(along < 0) | (states[:, k.USABLE] == 0)] = np.inf
+    across[~(along >= 0.0)] = np.inf
     number = int(np.argmin(across))
     if across[number] > 1.0:
         return None
