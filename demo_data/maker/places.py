@@ -68,7 +68,7 @@ OBSTACLES = [
     ("Tarvane valley power line", "power_line",
      [(23.6, 27.9), (24.0, 29.9), (24.2, 31.2), (24.4, 32.4)], 150, 100, 20, "2026-03-20"),
     ("Cauldreth power line", "power_line",
-     [(37.4, 30.4), (38.4, 29.0), (39.6, 27.5), (40.4, 26.5)], 120, 250, 50, "2025-11-11"),
+     [(37.4, 30.4), (38.4, 29.0), (39.6, 27.5), (40.4, 26.5)], 120, 250, 50, "2026-01-11"),
     ("Skerrowen Head wind turbine 1", "wind_turbine", [(15.3, 36.2)], 490, 20, 10, "2026-04-11"),
     ("Skerrowen Head wind turbine 2", "wind_turbine", [(15.8, 36.0)], 490, 20, 10, "2026-04-11"),
     ("Skerrowen Head wind turbine 3", "wind_turbine", [(16.3, 35.8)], 490, 20, 10, "2026-04-11"),
@@ -83,7 +83,7 @@ ROUTE = [
     ("Ostrell", 22.0, 30.6, 4500),
     ("Kelmoor", 20.6, 39.3, 5500),
     ("Ridge Valley", 32.0, 39.4, 6500),
-    ("Selwarn Pass", 47.6, 44.3, 8500),
+    ("Selwarn Pass", 47.35, 43.61, 8500),
     ("Orrendale", 56.6, 41.2, 5500),
 ]
 
