@@ -188,8 +188,9 @@ def _within(sources: list[TerrainSource], z: int, x: int, y: int) -> NDArray[np.
 
 def _finished(rgba: Array) -> Tile:
     """Return RGBA [0 .. 255] as a tile."""
+    channels = 3 if (rgba[..., 3] == 255.0).all() else 4
     out = io.BytesIO()
-    Image.fromarray(rgba.astype(np.uint8)).save(out, "PNG", compress_level=5)
+    Image.fromarray(rgba[..., :channels].astype(np.uint8)).save(out, "PNG", compress_level=3)
     png = out.getvalue()
     return Tile(png, f'"{hashlib.sha256(png).hexdigest()[:24]}"')
 
