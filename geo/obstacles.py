@@ -196,13 +196,15 @@ def load_obstacles(path: Path) -> list[Obstacle]:
     TerrainError
         The file or one of its features cannot be used; names the file and the feature's number.
     """
+    not_one = f"The obstacle file {path.name} is not a GeoJSON FeatureCollection."
     try:
         if path.stat().st_size > MAX_FILE_BYTES:
             raise TerrainError(f"The obstacle file {path.name} is larger than 64 MB.")
         features = json.loads(path.read_text(encoding="utf-8"))["features"]
     except (OSError, ValueError, KeyError, TypeError, RecursionError):
-        text = f"The obstacle file {path.name} is not a GeoJSON FeatureCollection."
-        raise TerrainError(text, allowed=ALLOWED) from None
+        raise TerrainError(not_one, allowed=ALLOWED) from None
+    if not isinstance(features, list):
+        raise TerrainError(not_one, allowed=ALLOWED)
     found: list[Obstacle] = []
     for number, feature in enumerate(features):
         try:

@@ -157,7 +157,8 @@ class TerrainStore:
         """
         x_m = (col0 + np.array([0.0, n_cols / 2, n_cols])) * cell_m
         y_m = (row0 + np.array([0.0, n_rows / 2, n_rows])) * cell_m
-        self._refuse(*frame.to_lonlat(*np.meshgrid(x_m, y_m)))
+        lon, lat = frame.to_lonlat(*np.meshgrid(x_m, y_m))
+        self._refuse(lon, lat)
         tile_rows = range(row0 // TILE_CELLS, (row0 + n_rows - 1) // TILE_CELLS + 1)
         tile_cols = range(col0 // TILE_CELLS, (col0 + n_cols - 1) // TILE_CELLS + 1)
         keys = [(frame, float(cell_m), row, col) for row in tile_rows for col in tile_cols]
@@ -169,7 +170,8 @@ class TerrainStore:
             into_cols, from_cols = _overlap(key[3] * TILE_CELLS - col0, n_cols)
             top_m[into_rows, into_cols] = tile.top_m[from_rows, from_cols]
             used |= tile.layers
-        sources = tuple(source for index in sorted(used) for source in self._shown[index])
+        shown = [source for index in sorted(used) for source in self._shown[index]]
+        sources = tuple(source for source in shown if meets(source.bbox, lon, lat))
         return TerrainWindow(top_m, frame, float(cell_m), row0, col0, sources)
 
     def ground_m(self, lon_deg: ArrayLike, lat_deg: ArrayLike) -> Values:

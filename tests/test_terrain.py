@@ -76,6 +76,47 @@ def test_grid_north_14_degrees_off_and_cells_not_square(tmp_path):
     assert np.diff(store.ground_m(lon, lat))[0] == pytest.approx(-70.0, abs=0.01)  # Derived
 
 
+@pytest.mark.parametrize(
+    ("crs", "transform"),
+    [
+        ("EPSG:4326", Affine(4e-4, 1e-4, 9.0, 5e-5, -3e-4, 46.0)),  # turned and sheared
+        ("EPSG:4267", Affine(3e-4, 0.0, -84.0, 0.0, -3e-4, 36.0)),  # NAD27, degrees
+        ("EPSG:3857", Affine(40.0, 0.0, 1e6, 0.0, -40.0, 8.5e6)),
+        ("EPSG:3413", Affine(30.0, 0.0, 3e5, 0.0, -30.0, -1.4e6)),  # polar stereographic
+        ("EPSG:2229", Affine(100.0, 0.0, 6.4e6, 0.0, -100.0, 1.9e6)),  # in US survey feet
+        ("EPSG:32660", Affine(30.0, 0.0, 6.7e5, 0.0, 30.0, 6.7e6)),  # south side up
+    ],
+)
+def test_any_coordinate_system(tmp_path, crs, transform):
+    path = write_raster(tmp_path / "terrain" / "a.tif", ROUGH, transform, crs)
+    surface, store = SourceSurface(path), TerrainStore(tmp_path)
+    x, y = (transform.a + transform.b) * 60 + transform.c, (transform.d + transform.e) * 60
+    to_lonlat = Transformer.from_crs(crs, "EPSG:4326", always_xy=True)
+    window = window_about(store, *to_lonlat.transform(x, y + transform.f), 40)
+    lon, lat, row, col = places_in(window)
+    ground_m = surface.height_m(lon, lat)
+    assert not np.isnan(ground_m).any()
+    np.testing.assert_allclose(store.ground_m(lon, lat), ground_m, atol=1e-3)
+    # 10 cm: 2 cm of misplacement on slopes of up to 50 m from post to post (20 m or more).
+    assert (window.top_m[row, col] - ground_m).min() > -0.1
+    spread = store.sources[0].bbox
+    assert spread[0] < lon.min() < lon.max() < spread[2]
+    assert spread[1] < lat.min() < lat.max() < spread[3]
+
+
+def test_a_one_degree_height_file(tmp_path):
+    heights = np.full((1201, 1201), 1234, dtype=">i2")
+    heights[600:602, 600:602] = -32768
+    (tmp_path / "terrain").mkdir()
+    (tmp_path / "terrain" / "N46E007.hgt").write_bytes(heights.tobytes())
+    store = TerrainStore(tmp_path)
+    # Source: SRTM collection user guide (NASA, 2015): the name is the south-west post, the first
+    # row is the north, posts on the degree lines, big-endian, -32768 a void.
+    assert store.sources[0].bbox == pytest.approx((7.0, 46.0, 8.0, 47.0), abs=1e-9)
+    got = store.ground_m([7.2, 7.5005, 7.0, 8.0, 8.0001], [46.9, 46.4995, 46.0, 47.0, 46.5])
+    np.testing.assert_array_equal(got, [1234.0, np.nan, 1234.0, 1234.0, np.nan])
+
+
 def test_a_post_is_the_middle_of_its_pixel_for_area_and_point_files(tmp_path):
     heights = np.arange(16.0).reshape(4, 4)
     place = TO_LONLAT.transform(ORIGIN[0] + 45.0, ORIGIN[1] - 75.0)  # Derived: row 2, column 1
