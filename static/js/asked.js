@@ -33,8 +33,10 @@ export class Asked {
     this.queue.push(question, true);
   }
 
+  /** What is shown belongs to inputs that no longer stand. */
   stop() {
     this.queue.stop();
+    byId("asked").classList.add("stale");
   }
 
   /**
@@ -68,6 +70,7 @@ export class Asked {
     this.chart.drawWay(section);
     byId("hint").hidden = true;
     const box = byId("asked");
+    box.classList.remove("stale");
     showSection(box, section, this.nameAt(state.to), this.hands.onClose);
     if (!look) return;
     this.hands.onShow();

@@ -6,7 +6,7 @@ import { SiteSigns } from "./signs.js";
 
 const L = /** @type {any} */ (globalThis).L;
 const PANES = /** @type {const} */ ([
-  ["shade", 350], ["outline", 410], ["way", 420], ["sites", 600], ["aeroplane", 650],
+  ["ground", 150], ["shade", 350], ["outline", 410], ["way", 420], ["sites", 600], ["aeroplane", 650],
 ]);
 const SLIVER = 0.04; // of a tile: a box may be wider than its slanting terrain by this much
 const RELIEF = "/api/tiles/relief/{z}/{x}/{y}.png";
@@ -26,7 +26,11 @@ export class Chart {
     for (const [name, level] of PANES) this.map.createPane(name).style.zIndex = String(level);
     this.renderers = Object.fromEntries(["shade", "outline", "way"].map((pane) =>
       [pane, L.svg({ pane, padding: 0.6 })]));
-    relief(catalog.terrain).addTo(this.map);
+    for (const box of boxes(catalog.terrain)) {
+      const style = { pane: "ground", className: "ground", interactive: false };
+      L.rectangle([[box.south, box.west], [box.north, box.east]], style).addTo(this.map);
+    }
+    relief(boxes(catalog.terrain)).addTo(this.map);
     this.answer = L.layerGroup().addTo(this.map);
     this.way = L.layerGroup().addTo(this.map);
     this.signs = new SiteSigns(this.map, catalog.sites, this.renderers.outline);
@@ -125,13 +129,21 @@ export class Chart {
 }
 
 /**
- * Relief tiles, asked for only where the catalogue says that there is terrain.
+ * Where the catalogue says that there is terrain [deg], on this turn of the globe and its neighbours.
  *
  * @param {{bbox: number[]}[]} terrain
  */
-function relief(terrain) {
-  const boxes = terrain.flatMap(({ bbox: [west, south, east, north] }) => [-360, 0, 360].map((turn) =>
+function boxes(terrain) {
+  return terrain.flatMap(({ bbox: [west, south, east, north] }) => [-360, 0, 360].map((turn) =>
     ({ west: west + turn, east: (east < west ? east + 360 : east) + turn, south, north })));
+}
+
+/**
+ * Relief tiles, asked for only where there is terrain.
+ *
+ * @param {{west: number, south: number, east: number, north: number}[]} places
+ */
+function relief(places) {
   const Relief = L.TileLayer.extend({
     createTile(/** @type {any} */ coords, /** @type {any} */ done) {
       const size = this.getTileSize();
@@ -140,7 +152,7 @@ function relief(terrain) {
       const { lat: south, lng: east } = this._map.unproject(corner.add(size), coords.z);
       const enough = (/** @type {number} */ shared, /** @type {number} */ tile, /** @type {number} */ box) =>
         shared > Math.min(tile * SLIVER, box / 2);
-      const known = boxes.some((box) =>
+      const known = places.some((box) =>
         enough(Math.min(box.east, east) - Math.max(box.west, west), east - west, box.east - box.west)
         && enough(Math.min(box.north, north) - Math.max(box.south, south), north - south, box.north - box.south));
       if (known) return L.TileLayer.prototype.createTile.call(this, coords, done);

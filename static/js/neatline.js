@@ -9,6 +9,7 @@ import { frameLabel } from "./format.js";
 const BAR_PX = 7; // width of the frame
 const LEAST_PX = 26; // shortest bar
 const LABEL_PX = 90; // least distance between figures
+const LEGEND_PX = 80; // the legend stands in the corner below
 const STEPS = [1, 2, 5, 10, 20, 30, 60, 120, 300, 600]; // minutes of arc
 
 /**
@@ -58,7 +59,7 @@ function bars(map, width, height) {
   }
   for (const minutes of up.labels) {
     const y = toY(minutes);
-    if (y > 40 && y < height - 60) drawn.push(figure(BAR_PX + 5, y + 4, "start", frameLabel(minutes, "N", "S")));
+    if (y > 40 && y < height - LEGEND_PX) drawn.push(figure(BAR_PX + 5, y + 4, "start", frameLabel(minutes, "N", "S")));
   }
   return drawn;
 }
