@@ -21,6 +21,7 @@ from service.problems import WORDS
 from service.schemas import FootprintRequest
 from service.settings import ROOT, Settings, SettingsError, check_data, default_data, default_work
 
+logger = logging.getLogger("engineout")
 EXIT_DONE, EXIT_FAILED, EXIT_REFUSED = 0, 1, 2
 CASE_FILE_MAX_BYTES = 256_000
 NUMBERS: dict[str, str] = {
@@ -241,14 +242,16 @@ def run_serve(options: argparse.Namespace) -> int:
 
     handler = logging.StreamHandler()
     handler.setFormatter(logging.Formatter("%(message)s"))
-    logging.getLogger("engineout").addHandler(handler)
-    logging.getLogger("engineout").setLevel(logging.INFO)
+    logger.addHandler(handler)
+    logger.setLevel(logging.INFO)
     settings = Settings(
         data=options.data or default_data(),
         static=ROOT / "static",
         work=options.work or default_work(),
     )
     app = create_app(settings)
+    host = f"[{options.host}]" if ":" in options.host else options.host
+    logger.info("Once ready, the page is at http://%s:%d", host, options.port)
     uvicorn.run(
         app,
         host=options.host,

@@ -45,7 +45,7 @@ class ProblemType:
 INVALID_REQUEST = ProblemType("invalid-request", 422, "The request has a field that is not allowed")
 INVALID_VALUE = ProblemType("invalid-value", 422, "A value is outside what the model accepts")
 FAULTY_RECORD = ProblemType("faulty-record", 422, "The aircraft record is faulty or unknown")
-NO_TERRAIN = ProblemType("no-terrain", 422, "There is no terrain here")
+NO_TERRAIN = ProblemType("no-terrain", 422, "There is no usable terrain here")
 SOLVE_TOO_LARGE = ProblemType("solve-too-large", 413, "The solve would exceed the cell limit")
 SOLVE_STOPPED = ProblemType("solve-stopped", 503, "The solve was stopped")
 TOO_BUSY = ProblemType("too-busy", 503, "All places for solves are taken")

@@ -7,7 +7,7 @@ import json
 from typing import Any
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from starlette.responses import PlainTextResponse
 from starlette.testclient import TestClient
@@ -47,12 +47,14 @@ def client() -> TestClient:
 
 
 @given(values)
+@settings(deadline=None)
 def test_depth_is_that_of_the_parsed_value(value: Any) -> None:
     for text in (json.dumps(value), json.dumps(value, ensure_ascii=False, indent=1)):
         assert depth_of(text.encode("utf-8", "surrogatepass"), 99) == depth_in_words(value)
 
 
 @given(st.binary(max_size=200))
+@settings(deadline=None)
 def test_depth_takes_any_bytes(body: bytes) -> None:
     assert 0 <= depth_of(body, 64) <= 65
 

@@ -24,7 +24,11 @@ from tests.service_support import REQUEST, settings_in, stand_in
 
 JSON = {"content-type": "application/json"}
 QUICK = settings(
-    max_examples=12, deadline=None, suppress_health_check=list(HealthCheck), database=None
+    max_examples=12,
+    deadline=None,
+    suppress_health_check=list(HealthCheck),
+    database=None,
+    derandomize=True,
 )
 
 
