@@ -22,7 +22,6 @@ Flags = NDArray[np.uint8]
 
 NO_TOP = -np.inf  # no valid point of the surface has been found in the cell
 SKIN = 1e-3  # of a pixel: a cell that shares no more than a side with a pixel does not touch it
-EDGE = 1e-6  # posts: a place on the outermost posts counts as on the terrain, whatever the rounding
 TOUCH_M = 0.05  # posts this close to a cell count as in it: covers the mapping's interpolation
 
 
@@ -282,11 +281,9 @@ def sample(posts: Posts, u: Values, v: Values, out: Values) -> None:
     """
     n_rows, n_cols = posts.shape
     for k in range(u.size):
-        inside = -EDGE <= u[k] <= n_cols - 1 + EDGE and -EDGE <= v[k] <= n_rows - 1 + EDGE
-        if not (inside and math.isnan(out[k])):
+        if not (math.isnan(out[k]) and 0.0 <= u[k] <= n_cols - 1 and 0.0 <= v[k] <= n_rows - 1):
             continue
-        i = min(max(math.floor(u[k]), 0), n_cols - 2)
-        j = min(max(math.floor(v[k]), 0), n_rows - 2)
+        i, j = min(math.floor(u[k]), n_cols - 2), min(math.floor(v[k]), n_rows - 2)
         s, t = u[k] - i, v[k] - j
         south = float(posts[j, i]) * (1.0 - s) + float(posts[j, i + 1]) * s
         north = float(posts[j + 1, i]) * (1.0 - s) + float(posts[j + 1, i + 1]) * s

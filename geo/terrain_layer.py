@@ -25,6 +25,8 @@ Box = tuple[int, int, int, int]
 
 SAME_GRID_CELLS = 0.01  # files whose posts agree this well share a grid
 SQUARE = 256  # side of the squares of posts that single places are read from
+EDGE = 1e-6  # posts: a place so near a line of posts lies on it
+NUDGES = [(du, dv) for du in (0.0, -EDGE, EDGE) for dv in (0.0, -EDGE, EDGE)][1:]
 SQUARES_KEPT = 128  # of each layer, 32 MB
 
 _GEOD = Geod(ellps="WGS84")
@@ -177,10 +179,12 @@ class Layer:
         pair = transformers(self.first.crs)
         x, y = (lon_deg, lat_deg) if pair is None else pair[0].transform(lon_deg, lat_deg)
         if pair is not None and self.per_degree:
-            x = np.asarray(x) + _turns(lon_deg - np.asarray(x))
+            with np.errstate(invalid="ignore"):
+                x = np.asarray(x) + _turns(lon_deg - np.asarray(x))
         inverse = ~self.first.transform
-        u = inverse.a * x + inverse.b * y + (inverse.c - 0.5)
-        v = inverse.d * x + inverse.e * y + (inverse.f - 0.5)
+        with np.errstate(invalid="ignore"):  # the projection gives inf where it has no answer
+            u = inverse.a * x + inverse.b * y + (inverse.c - 0.5)
+            v = inverse.d * x + inverse.e * y + (inverse.f - 0.5)
         return np.asarray(u), np.asarray(v)
 
     def to_lonlat(self, u: Values, v: Values) -> tuple[Values, Values]:
@@ -242,8 +246,21 @@ class Layer:
 
     def heights_m(self, lon_deg: Values, lat_deg: Values) -> Values:
         """Return bilinear heights [m] at places, shape ``(k,)``, NaN where void or off it."""
-        out = np.full(lon_deg.size, np.nan)
         u, v = self.to_posts(lon_deg, lat_deg, float(lon_deg[0]))
+        out = self._heights(u, v)
+        missing = np.flatnonzero(np.isnan(out) & np.isfinite(u) & np.isfinite(v))
+        on_line = np.maximum(abs(u[missing] % 1.0 - 0.5), abs(v[missing] % 1.0 - 0.5))
+        edge = missing[on_line > 0.5 - EDGE]
+        for du, dv in NUDGES:  # on a line of posts, the patch of either side will do
+            if edge.size == 0:
+                break
+            out[edge] = self._heights(u[edge] + du, v[edge] + dv)
+            edge = edge[np.isnan(out[edge])]
+        return out
+
+    def _heights(self, u: Values, v: Values) -> Values:
+        """Return bilinear heights [m] at post coordinates, NaN where void or off the layer."""
+        out = np.full(u.size, np.nan)
         for row, col, here in by_square(u, v):
             posts = self.squares.get(row, col)
             if posts is None:

@@ -164,6 +164,16 @@ def test_off_the_terrain_is_void(tmp_path):
     assert np.isnan(store.ground_m([np.nan, 9.0], [46.0, np.inf])).all()
 
 
+def test_a_place_that_the_projection_does_not_know_is_void(tmp_path):
+    at = Affine(30.0, 0.0, 3e5, 0.0, -30.0, -1.4e6)
+    store = store_of(tmp_path, ROUGH, at, "EPSG:3413")  # north polar: has no south pole
+    lon, lat = Transformer.from_crs("EPSG:3413", "EPSG:4326", always_xy=True).transform(
+        3e5 + 1800.0, -1.4e6 - 1800.0
+    )
+    ground_m = store.ground_m([lon, lon, 0.0], [lat, -90.0, -89.9])
+    assert np.isfinite(ground_m).tolist() == [True, False, False]
+
+
 @pytest.mark.parametrize(
     ("options", "metre", "shown"),
     [
