@@ -12,6 +12,7 @@ from shapely import Geometry, LineString, MultiPolygon, Polygon, prepare
 from shapely.geometry.base import BaseGeometry
 
 Array = NDArray[np.float64]
+Point = tuple[float, float]
 GEOD = Geod(ellps="WGS84")
 G = 9.80665  # standard gravity [m/s2]
 
@@ -99,6 +100,13 @@ def turn_loss_per_rad_m(eas_mps: float, ratio: float, bank_rad: float) -> float:
     return eas_mps**2 / (ratio * G * math.sin(bank_rad) * math.cos(bank_rad))
 
 
+def turn_rad(before: Point, at: Point, after: Point) -> float:
+    """Return the angle of the bend at a point [rad, 0 .. pi]."""
+    first = math.atan2(at[0] - before[0], at[1] - before[1])
+    second = math.atan2(after[0] - at[0], after[1] - at[1])
+    return abs((second - first + math.pi) % (2.0 * math.pi) - math.pi)
+
+
 class Obstacles:
     """Upright obstacles higher than any glide, as polygons in true local axes.
 
@@ -113,40 +121,41 @@ class Obstacles:
         self.corners = [corner for shape in polygons for corner in shape.exterior.coords[:-1]]
         self._loss_m = loss_m
 
-    def sees(self, a: tuple[float, float], b: tuple[float, float]) -> bool:
+    def sees(self, a: Point, b: Point) -> bool:
         """Tell whether the straight line between two points misses every obstacle."""
         return a == b or not self._solid.intersects(LineString([a, b]))
 
-    def corner_losses_m(self, start: tuple[float, float]) -> list[float]:
-        """Return the least loss [m] from `start` to each corner (Bellman-Ford)."""
-        n = len(self.corners)
-        legs = np.full((n, n), np.inf)
-        for i, a in enumerate(self.corners):
-            for j, b in enumerate(self.corners):
-                if i != j and self.sees(a, b):
-                    legs[i, j] = self._loss_m(a, b)
-        loss = np.array([self._loss_m(start, c) if self.sees(start, c) else np.inf
-                         for c in self.corners])  # fmt: skip
-        for _ in range(n):
-            loss = np.minimum(loss, np.min(loss[:, None] + legs, axis=0))
-        return [float(value) for value in loss]
+    def _edge_losses_m(self, start: Point, turn_m: float) -> dict[tuple[Point, Point], float]:
+        """Return the least loss [m] on arrival at each corner, by the point it is come from."""
+        loss = {(start, c): self._loss_m(start, c) for c in self.corners if self.sees(start, c)}
+        seen = {(a, b) for a in self.corners for b in self.corners if a != b and self.sees(a, b)}
+        for _ in self.corners:
+            for (before, a), held in list(loss.items()):
+                for b in self.corners:
+                    if (a, b) in seen:
+                        new = held + turn_m * turn_rad(before, a, b) + self._loss_m(a, b)
+                        if new < loss.get((a, b), np.inf) - 1e-9:
+                            loss[a, b] = new
+        return loss
 
-    def losses_m(self, start: tuple[float, float], ends: Array) -> Array:
-        """Return the least loss [m] from `start` to each of `ends` (n, 2), inf where walled in."""
-        to_corner = self.corner_losses_m(start)
+    def losses_m(self, start: Point, ends: Array, turn_m: float = 0.0) -> Array:
+        """Return the least loss [m] from `start` to each of `ends` (n, 2), inf where walled in.
+
+        `turn_m` is the height a turn costs per radian at a corner, on top of the straight way.
+        """
+        edges = self._edge_losses_m(start, turn_m)
         out = np.full(len(ends), np.inf)
         for k, (x, y) in enumerate(ends):
             end = (float(x), float(y))
             if self.sees(start, end):
                 out[k] = self._loss_m(start, end)
                 continue
-            for corner, loss in zip(self.corners, to_corner, strict=True):
-                if loss < out[k] and self.sees(corner, end):
-                    out[k] = min(out[k], loss + self._loss_m(corner, end))
+            visible = {corner for corner in self.corners if self.sees(corner, end)}
+            for (before, corner), held in edges.items():
+                if held < out[k] and corner in visible:
+                    turned_m = turn_m * turn_rad(before, corner, end)
+                    out[k] = min(out[k], held + turned_m + self._loss_m(corner, end))
         return out
-
-
-Point = tuple[float, float]
 
 
 class LossFunction:
