@@ -25,6 +25,7 @@ Box = tuple[int, int, int, int]
 
 SAME_GRID_CELLS = 0.01  # files whose posts agree this well share a grid
 SQUARE = 256  # side of the squares of posts that single places are read from
+FAR = 1e9  # posts: no raster is so large
 EDGE = 1e-6  # posts: a place so near a line of posts lies on it
 NUDGES = [(du, dv) for du in (0.0, -EDGE, EDGE) for dv in (0.0, -EDGE, EDGE)][1:]
 SQUARES_KEPT = 128  # of each layer, 32 MB
@@ -182,10 +183,12 @@ class Layer:
             with np.errstate(invalid="ignore"):
                 x = np.asarray(x) + _turns(lon_deg - np.asarray(x))
         inverse = ~self.first.transform
-        with np.errstate(invalid="ignore"):  # the projection gives inf where it has no answer
+        with np.errstate(invalid="ignore"):  # far off, the projection gives inf or nonsense
             u = inverse.a * x + inverse.b * y + (inverse.c - 0.5)
             v = inverse.d * x + inverse.e * y + (inverse.f - 0.5)
-        return np.asarray(u), np.asarray(v)
+            known = (abs(u) < FAR) & (abs(v) < FAR)
+        u, v = np.where(known, u, np.nan), np.where(known, v, np.nan)
+        return u, v
 
     def to_lonlat(self, u: Values, v: Values) -> tuple[Values, Values]:
         """Return longitude and latitude [deg] of post coordinates; longitude may pass 180."""
