@@ -10,8 +10,8 @@ import numpy as np
 from numpy.typing import NDArray
 from pyproj import Geod
 
-from geo import kernels as k
-from geo import paths
+from geo import layout as k
+from geo import paths, rays
 from geo.answers import Explanation, GlidePath, ProfilePoint, Ridge, SiteReach
 from geo.case import FT_M, NM_M
 from geo.sites import Site
@@ -101,18 +101,18 @@ def room_to_lose(answer: Footprint, row: int, col: int) -> bool:
     """Return whether the surplus over a reached cell can be lost in a drifting circle."""
     labels, glide = answer.labels, answer.glide
     ray_id = int(labels.ray[row, col])
-    anchor = k.find_anchor(labels.anchors, len(labels.anchors), ray_id)
+    anchor = rays.find_anchor(labels.anchors, len(labels.anchors), ray_id)
     number = ray_id - int(labels.anchors[anchor, k.OFFSET])
-    state = k.replay(glide.air, labels.par, labels.run.shape[1], labels.anchors, anchor, number)
-    t = k.nearest_on_ray(state, row, col)
+    state = rays.replay(glide.air, labels.par, labels.run.shape[1], labels.anchors, anchor, number)
+    t = rays.nearest_on_ray(state, row, col)
     circle = np.zeros(k.N_ANCHOR)
     circle[k.AX] = state[k.SX] + t * state[k.DX]
     circle[k.AY] = state[k.SY] + t * state[k.DY]
     circle[k.AZ], circle[k.STEP], circle[k.TURNS] = labels.alt_m[row, col], 0.1, 1.0
     heading = circle[k.HX : k.HY + 1]
-    k.heading_for(glide.air, labels.par, circle[k.AZ], state[k.DX], state[k.DY], heading)
+    rays.heading_for(glide.air, labels.par, circle[k.AZ], state[k.DX], state[k.DY], heading)
     need = _need_m(answer, row, col)
-    return bool(k.has_room(labels.top_m, glide.air, labels.par, circle, need))
+    return bool(rays.has_room(labels.top_m, glide.air, labels.par, circle, need))
 
 
 def _unlabelled(answer: Footprint, lon: float, lat: float, ground: float) -> Explanation:

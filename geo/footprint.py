@@ -17,7 +17,8 @@ from numpy.typing import NDArray
 from shapely.geometry import MultiPolygon
 
 from geo import explain as _explain
-from geo import kernels as k
+from geo import front, rays
+from geo import layout as k
 from geo import paths as _paths
 from geo.answers import Explanation, GlidePath, ProfilePoint, SiteReach
 from geo.case import GlideCase, SolveLimits
@@ -26,7 +27,8 @@ from geo.glide import LEVEL_STEP_M, LOWEST_GROUND_M, Glide, GlideFigures, prepar
 from geo.grid import Grid, choose_grid, reach_box_m
 from geo.outline import to_lonlat, trace
 from geo.sites import Site
-from geo.terrain import TerrainSource, TerrainStore
+from geo.terrain import TerrainStore
+from geo.terrain_source import TerrainSource
 from perf.errors import Cancelled, TerrainError
 
 Array = NDArray[np.float64]
@@ -51,11 +53,11 @@ class Labels:
     top_m
         Highest point of each cell [m], +inf where blocked, shape ``(n_rows, n_cols)``.
     alt_m
-        Altitude of arrival [m], ``kernels.UNREACHED`` where no path arrives.
+        Altitude of arrival [m], ``layout.UNREACHED`` where no path arrives.
     ray
         Number of the ray behind each label, -1 where none.
     anchors
-        Anchor table, shape ``(n_anchors, kernels.N_ANCHOR)``.
+        Anchor table, shape ``(n_anchors, layout.N_ANCHOR)``.
     run
         Cells flown per metre of height, shape ``(n_levels - 1, n_tracks)``.
     par
@@ -146,6 +148,7 @@ def solve(
     sites: Sequence[Site] = (),
     limits: SolveLimits | None = None,
     cancel: NDArray[np.uint8] | None = None,
+    bend: bool = True,
 ) -> Footprint:
     """Return the footprint of one case.
 
@@ -161,6 +164,8 @@ def solve(
         Largest solve that is started.
     cancel
         One byte; set to 1 from another thread it stops the solve.
+    bend
+        False leaves out the paths that bend round terrain: both outlines are the straight one.
 
     Raises
     ------
@@ -184,11 +189,14 @@ def solve(
     glide = prepare(case, frame, ground_m)
     grid = _grid(store, glide, frame, limits)
     window = store.window(frame, grid.col0, grid.row0, grid.n_cols, grid.n_rows, grid.cell_m)
-    labels = label(glide, grid, window.top_m, cancel)
+    labels = label(glide, grid, window.top_m, cancel, bend)
+    straight = to_lonlat(trace(labels.straight), frame, grid.col0, grid.row0, grid.cell_m)
+    outline = straight
+    if bend:
+        outline = to_lonlat(trace(labels.reach), frame, grid.col0, grid.row0, grid.cell_m)
     return Footprint(
         case, glide, grid, store, labels, ground_m,
-        to_lonlat(trace(labels.reach), frame, grid.col0, grid.row0, grid.cell_m),
-        to_lonlat(trace(labels.straight), frame, grid.col0, grid.row0, grid.cell_m),
+        outline, straight,
         window.sources, _sentences(store, glide, grid, labels), tuple(sites),
     )  # fmt: skip
 
@@ -211,8 +219,9 @@ def arrival_m(case: GlideCase) -> float:
 
 
 def label(
-    glide: Glide, grid: Grid, top_m: NDArray[np.float32], cancel: NDArray[np.uint8]
-) -> Labels:
+    glide: Glide, grid: Grid, top_m: NDArray[np.float32], cancel: NDArray[np.uint8],
+    bend: bool = True,
+) -> Labels:  # fmt: skip
     """Return the labels of every cell of a window.
 
     Parameters
@@ -225,6 +234,8 @@ def label(
         Highest point of each cell [m], NaN where void, shape ``(n_rows, n_cols)``.
     cancel
         One byte that stops the work when set.
+    bend
+        False leaves out the paths that bend round terrain.
 
     Raises
     ------
@@ -243,11 +254,11 @@ def label(
     n_roots = _roots(glide, grid, top, run, par, anchors)
     touched = np.empty(0, dtype=np.int32)
     for root in range(n_roots):
-        k.fan(top, alt, ray, run, glide.air, par, anchors, root, touched, True)
+        front.fan(top, alt, ray, run, glide.air, par, anchors, root, touched, True)
     straight = alt >= top + np.float32(need_m)
-    n_anchors = k.spread(
+    n_anchors = front.spread(
         top, alt, ray, run, glide.air, par, anchors, n_roots, cancel, ANCHOR_SPACING_CELLS
-    ) if n_roots else 0  # fmt: skip
+    ) if n_roots and bend else n_roots  # fmt: skip
     if n_anchors < 0 or cancel[0]:
         raise Cancelled
     reach = alt >= top + np.float32(need_m)
@@ -263,7 +274,8 @@ def _parameters(glide: Glide, grid: Grid, floor_m: float) -> Array:
     par[k.MAX_RUN] = glide.run.max() / grid.cell_m
     loss = min(float(glide.table.loss.max()), 4.0 / glide.table.ratio)
     par[k.JUMP_M] = JUMP_M + JUMP_CELLS * grid.cell_m * loss
-    par[k.ROOM_M], par[k.DETOUR_CELLS] = ROOM_M, DETOUR_CELLS
+    dive = glide.table.tas_mps[0] ** 2 * (1.0 / par[k.BANK_COS] - 1.0) / (2.0 * k.GRAVITY_MPS2)
+    par[k.ROOM_M], par[k.DETOUR_CELLS] = ROOM_M + dive, DETOUR_CELLS
     return par
 
 
@@ -284,17 +296,17 @@ def _roots(
     root = anchors[0]
     root[k.AX], root[k.AY], root[k.AZ], root[k.PARENT] = x, y, z, -1
     root[k.HX], root[k.HY], root[k.SIDE] = 0.0, 1.0, 1.0
-    if not k.is_clear(top, par, root):
+    if not rays.is_clear(top, par, root):
         return 0
     if glide.track_rad is None:
         root[k.COUNT], root[k.STEP] = np.ceil(2 * pi * reach), 2 * pi / np.ceil(2 * pi * reach)
         return 1
     dx, dy = sin(glide.track_rad), cos(glide.track_rad)
-    if not k.heading_for(glide.air, par, z, dx, dy, root[k.HX : k.HY + 1]):
+    if not rays.heading_for(glide.air, par, z, dx, dy, root[k.HX : k.HY + 1]):
         return 0
     root[k.COUNT], root[k.STEP] = 1, 0.0
     end = np.empty(3)
-    if not k.fly_on(top, run, glide.air, par, root, glide.figures.reaction_s, end):
+    if not rays.fly_on(top, run, glide.air, par, root, glide.figures.reaction_s, end):
         return 1
     for j, side in ((1, 1.0), (2, -1.0)):
         turn = anchors[j]

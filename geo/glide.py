@@ -7,7 +7,8 @@ from math import pi
 
 import numpy as np
 from numpy.typing import NDArray
-from geo import kernels as k
+
+from geo import layout as k
 from geo.case import FT_M, REACTION_LOW_HEIGHT_M, GlideCase
 from geo.frame import Frame
 from perf.atmosphere import eas_to_tas_mps
@@ -72,7 +73,7 @@ def prepare(case: GlideCase, frame: Frame, ground_m: float) -> Glide:
             "altitude_ft",
             f"above {ground_m / FT_M:.0f} ft at this position",
         )
-    turn = frame.convergence_rad(case.lon_deg, case.lat_deg)
+    turn = float(frame.convergence_rad(case.lon_deg, case.lat_deg))
     wind = case.wind.turned(turn)
     margins = case.margins
     polar = case.polar.degraded(margins.ratio_factor)

@@ -7,7 +7,7 @@ from math import pi
 
 import numpy as np
 
-from geo import kernels as k
+from geo import layout as k
 from geo.case import SolveLimits
 from geo.frame import Frame
 from geo.glide import LEVEL_STEP_M, Glide

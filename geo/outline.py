@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
+from typing import Any
+
 import contourpy
 import numpy as np
 import shapely
 from numpy.typing import NDArray
 from shapely.geometry import MultiPolygon, box
+from shapely.geometry.base import BaseGeometry
 
 from geo.frame import Frame
 
@@ -32,24 +36,31 @@ def trace(mask: NDArray[np.bool_]) -> MultiPolygon:
         return MultiPolygon()
     rows, cols = np.flatnonzero(mask.any(axis=1)), np.flatnonzero(mask.any(axis=0))
     r0, c0 = rows[0], cols[0]
-    padded = np.pad(mask[r0 : rows[-1] + 1, c0 : cols[-1] + 1], 1).astype(np.float32)
+    inner = mask[r0 : rows[-1] + 1, c0 : cols[-1] + 1]
+    padded = np.zeros((inner.shape[0] + 2, inner.shape[1] + 2))
+    padded[1:-1, 1:-1] = inner
     contours = contourpy.contour_generator(
         z=padded, name="serial", fill_type=contourpy.FillType.OuterOffset
     )
-    points, offsets = contours.filled(0.5, 2.0)
-    pieces = [_polygon(p, o) for p, o in zip(points, offsets, strict=True)]
-    outline = shapely.simplify(
-        MultiPolygon([piece for piece in pieces if piece is not None]), SIMPLIFY_CELLS
-    )
+    filled: Any = contours.filled(0.5, 2.0)
+    pieces = [_polygon(p, o) for p, o in zip(filled[0], filled[1], strict=True)]
+    full = MultiPolygon([piece for piece in pieces if piece is not None])
+    outline: BaseGeometry = shapely.simplify(full, SIMPLIFY_CELLS, preserve_topology=False)
+    if not outline.is_valid:  # rings may touch after the fast way; the slow one keeps them apart
+        outline = shapely.simplify(full, SIMPLIFY_CELLS)
     if not outline.is_valid:
         outline = shapely.make_valid(outline, method="structure", keep_collapsed=False)
-    moved = shapely.transform(outline, lambda xy: xy + (c0 - 0.5, r0 - 0.5))
-    return _as_multi(moved)
+    shift = np.array((c0 - 0.5, r0 - 0.5))
+    return _as_multi(_moved(outline, shift))
+
+
+def _moved(shape: BaseGeometry, by: NDArray[np.float64]) -> BaseGeometry:
+    return shapely.transform(shape, lambda xy: xy + by)
 
 
 def _polygon(points: NDArray[np.float64], offsets: NDArray[np.uint32]) -> shapely.Polygon | None:
     """Return one contour as a polygon, its specks left out; None when it is a speck itself."""
-    rings = [points[a:b] for a, b in zip(offsets[:-1], offsets[1:], strict=True)]
+    rings = [points[a:b] for a, b in pairwise(offsets)]
     if abs(_ring_area(rings[0])) < SPECK_CELLS:
         return None
     holes = [ring for ring in rings[1:] if abs(_ring_area(ring)) >= SPECK_CELLS]
@@ -61,7 +72,7 @@ def _ring_area(ring: NDArray[np.float64]) -> float:
     return 0.5 * float(np.dot(x[:-1], y[1:]) - np.dot(x[1:], y[:-1]))
 
 
-def _as_multi(shape: shapely.Geometry) -> MultiPolygon:
+def _as_multi(shape: BaseGeometry) -> MultiPolygon:
     """Return the polygons of any geometry as one MultiPolygon, exteriors counter-clockwise."""
     parts = [part for part in shapely.get_parts(shape) if part.geom_type == "Polygon"]
     parts += [p for m in shapely.get_parts(shape) if m.geom_type == "MultiPolygon" for p in m.geoms]
@@ -81,9 +92,10 @@ def to_lonlat(
     def geographic(xy: NDArray[np.float64]) -> NDArray[np.float64]:
         lon, lat = frame.to_lonlat((xy[:, 0] + col0) * cell_m, (xy[:, 1] + row0) * cell_m)
         lon = frame.lon0_deg + (np.asarray(lon) - frame.lon0_deg + 180.0) % 360.0 - 180.0
-        return np.round(np.column_stack((lon, lat)), 6)
+        pairs: NDArray[np.float64] = np.column_stack((lon, lat))
+        return pairs.round(6)
 
-    shape = shapely.transform(outline, geographic)
+    shape: BaseGeometry = shapely.transform(outline, geographic)
     if not shape.is_valid:
         shape = shapely.make_valid(shape, method="structure", keep_collapsed=False)
     west, _, east, _ = shape.bounds
@@ -92,12 +104,11 @@ def to_lonlat(
     return _as_multi(shape)
 
 
-def _cut(shape: shapely.Geometry) -> shapely.Geometry:
+def _cut(shape: BaseGeometry) -> BaseGeometry:
     """Cut a shape whose longitudes run past 180 degrees and bring the pieces back."""
     pieces = []
     for turns in (-1, 0, 1):
         part = shapely.intersection(shape, box(360 * turns - 180, -90, 360 * turns + 180, 90))
-        pieces += list(
-            _as_multi(shapely.transform(part, lambda xy, t=turns: xy - (360.0 * t, 0.0))).geoms
-        )
+        back = np.array((360.0 * turns, 0.0))
+        pieces += list(_as_multi(_moved(part, -back)).geoms)
     return MultiPolygon(pieces)

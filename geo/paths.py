@@ -9,7 +9,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from geo import kernels as k
+from geo import layout as k
+from geo import rays
 from geo.answers import GlidePath, PathPoint
 
 if TYPE_CHECKING:
@@ -53,12 +54,12 @@ def _leg(
     glide: Glide, labels: Labels, ray_id: int, row: int, col: int, at: tuple[float, float] | None
 ) -> Leg:
     """Return the leg of a ray up to the cell (row, col), or up to the anchor at `at`."""
-    anchor = k.find_anchor(labels.anchors, len(labels.anchors), ray_id)
+    anchor = rays.find_anchor(labels.anchors, len(labels.anchors), ray_id)
     number = ray_id - int(labels.anchors[anchor, k.OFFSET])
     n_tracks = labels.run.shape[1]
-    state = k.replay(glide.air, labels.par, n_tracks, labels.anchors, anchor, number)
+    state = rays.replay(glide.air, labels.par, n_tracks, labels.anchors, anchor, number)
     if at is None:
-        cells = k.nearest_on_ray(state, row, col)
+        cells = rays.nearest_on_ray(state, row, col)
     else:
         cells = (at[0] - state[k.SX]) * state[k.DX] + (at[1] - state[k.SY]) * state[k.DY]
     return Leg(anchor, number, state, float(cells))
@@ -78,7 +79,9 @@ def straight_path(
         if labels.anchors[anchor, k.PARENT] >= 0:
             break
         leg = _nearest_root_leg(glide, labels, anchor, x, y)
-        if leg is not None and (best is None or _end_alt(labels, leg) > _end_alt(labels, best)):  # fmt: skip
+        if leg is None:
+            continue
+        if best is None or _end_alt(labels, leg) > _end_alt(labels, best):
             best = leg
     if best is None:
         return None
@@ -88,7 +91,7 @@ def straight_path(
 def _nearest_root_leg(glide: Glide, labels: Labels, anchor: int, x: float, y: float) -> Leg | None:
     """Return the ray of a first turn that passes nearest to a place [cells], within one cell."""
     count = int(labels.anchors[anchor, k.COUNT])
-    states = k.starts(glide.air, labels.par, labels.run.shape[1], labels.anchors, anchor, count)
+    states = rays.starts(glide.air, labels.par, labels.run.shape[1], labels.anchors, anchor, count)
     ahead_x, ahead_y = x - states[:, k.SX], y - states[:, k.SY]
     along = ahead_x * states[:, k.DX] + ahead_y * states[:, k.DY]
     across = np.abs(ahead_x * states[:, k.DY] - ahead_y * states[:, k.DX])
@@ -100,7 +103,7 @@ def _nearest_root_leg(glide: Glide, labels: Labels, anchor: int, x: float, y: fl
 
 
 def _end_alt(labels: Labels, leg: Leg) -> float:
-    return float(k.alt_along(labels.run, labels.par, leg.state, leg.cells))
+    return float(rays.alt_along(labels.run, labels.par, leg.state, leg.cells))
 
 
 def _assemble(
@@ -114,11 +117,11 @@ def _assemble(
         anchor, state = labels.anchors[leg.anchor], leg.state
         if anchor[k.TURNS] > 0.0:
             turn_rad = float(anchor[k.SIDE] * anchor[k.STEP] * leg.ray)
-            bank = glide.case.margins.bank_rad
+            turn = (glide.case.margins.bank_rad, turn_rad)
             points += [
-                _point(grid, anchor[k.AX], anchor[k.AY], anchor[k.AZ], "turn_start", bank, turn_rad),
-                _point(grid, state[k.SX], state[k.SY], state[k.CAP], "turn_end", bank, turn_rad),
-            ]  # fmt: skip
+                _point(grid, anchor[k.AX], anchor[k.AY], anchor[k.AZ], "turn_start", *turn),
+                _point(grid, state[k.SX], state[k.SY], state[k.CAP], "turn_end", *turn),
+            ]
             line += _arc_line(glide, labels, leg)
         line += _leg_line(labels, leg)
     points.append(_point(grid, *line[-1], "end"))
@@ -133,7 +136,7 @@ def _assemble(
 
 def _arc_line(glide: Glide, labels: Labels, leg: Leg) -> list[tuple[float, float, float]]:
     """Return points along the arc of a leg, its start included."""
-    states = k.starts(
+    states = rays.starts(
         glide.air, labels.par, labels.run.shape[1], labels.anchors, leg.anchor, leg.ray + 1
     )
     every = max(floor(ARC_POINT_RAD / labels.anchors[leg.anchor, k.STEP]), 1)
@@ -146,7 +149,7 @@ def _leg_line(labels: Labels, leg: Leg) -> list[tuple[float, float, float]]:
     s = leg.state
     return [
         (s[k.SX] + t * s[k.DX], s[k.SY] + t * s[k.DY],
-         float(k.alt_along(labels.run, labels.par, s, t)))
+         float(rays.alt_along(labels.run, labels.par, s, t)))
         for t in (leg.cells * i / pieces for i in range(pieces + 1))
     ]  # fmt: skip
 

@@ -54,7 +54,9 @@ class WindProfile:
         ordered = sorted(levels)
         alt_m = np.array([level[0] for level in ordered], dtype=np.float64)
         if np.any(np.diff(alt_m) <= 0):
-            raise InputError("Two wind levels have the same altitude.", "wind", "distinct altitudes")
+            raise InputError(
+                "Two wind levels have the same altitude.", "wind", "distinct altitudes"
+            )
         from_rad = np.array([level[1] for level in ordered], dtype=np.float64)
         speed_mps = np.array([level[2] for level in ordered], dtype=np.float64)
         return WindProfile(alt_m, -speed_mps * np.sin(from_rad), -speed_mps * np.cos(from_rad))
