@@ -137,13 +137,12 @@ class Opened:
 Opener = Callable[..., Opened]
 
 
-@pytest.fixture
-def open_page(browser: Any, server_url: str) -> Iterator[Opener]:
-    """Open the page in a fresh profile; at the end no error and no foreign request was seen.
+@contextlib.contextmanager
+def opening(browser: Any, server_url: str) -> Iterator[Opener]:
+    """Yield a function that opens the page; at the end no error and no foreign request was seen.
 
-    ``open_page(address="", size=WIDE, expected="", prepare=None, settle=True)``: `expected` is a
-    piece of the console errors that belong to the test, `prepare` is called with the page before
-    it loads.
+    ``opened(address="", size=WIDE, expected="", prepare=None)``: `expected` is a piece of the
+    console errors that belong to the test, `prepare` is called with the page before it loads.
     """
     contexts: list[Any] = []
     seen: list[tuple[Watch, str]] = []
@@ -153,7 +152,6 @@ def open_page(browser: Any, server_url: str) -> Iterator[Opener]:
         size: tuple[int, int] = WIDE,
         expected: str = "",
         prepare: Callable[[Any], None] | None = None,
-        settle: bool = True,
     ) -> Opened:
         context = browser.new_context(
             viewport={"width": size[0], "height": size[1]}, reduced_motion="reduce"
@@ -167,8 +165,7 @@ def open_page(browser: Any, server_url: str) -> Iterator[Opener]:
         if prepare:
             prepare(page)
         page.goto(address if address.startswith("http") else f"{server_url}/{address}")
-        if settle:
-            page.wait_for_selector("#chart[data-detail=fine]:not(.stale)")
+        page.wait_for_selector("#chart[data-detail=fine]:not(.stale)")
         return Opened(page, watch)
 
     yield opened
@@ -178,3 +175,10 @@ def open_page(browser: Any, server_url: str) -> Iterator[Opener]:
         unexpected = [text for text in watch.errors if not expected or expected not in text]
         assert unexpected == []
         assert watch.foreign(server_url) == []
+
+
+@pytest.fixture
+def open_page(browser: Any, server_url: str) -> Iterator[Opener]:
+    """Yield a function that opens the page in a fresh profile; see `opening`."""
+    with opening(browser, server_url) as opened:
+        yield opened

@@ -81,8 +81,8 @@ def test_dragging_follows_coarse_then_fine(open_page: Opener) -> None:
     x, y = middle(page, ".aeroplane")
     page.mouse.move(x, y)
     page.mouse.down()
-    for step in range(1, 9):
-        page.mouse.move(x - 6 * step, y + 4 * step)
+    for step in range(1, 5):
+        page.mouse.move(x - 12 * step, y + 8 * step)
     page.wait_for_selector("#chart[data-detail=coarse]")
     assert "coarse" in page.inner_text("#coarse").lower()
     assert re.search(r"\d+\sm cells", page.inner_text("#coarse"))
@@ -113,8 +113,8 @@ def test_the_last_coarse_answer_belongs_to_where_the_hand_rests(open_page: Opene
     x, y = middle(page, ".aeroplane")
     page.mouse.move(x, y)
     page.mouse.down()
-    for step in range(1, 9):
-        page.mouse.move(x + 5 * step, y)
+    for step in range(1, 5):
+        page.mouse.move(x + 10 * step, y)
     page.wait_for_selector("#chart[data-detail=coarse]")
     page.wait_for_load_state("networkidle")
     shown = page.input_value("[name=longitude_deg]")

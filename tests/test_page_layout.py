@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from typing import Any
 
 import pytest
 
-from tests.conftest import NARROW, WIDE, Opener
+from tests.conftest import NARROW, WIDE, Opener, opening
 
 pytestmark = pytest.mark.browser
-SIZES = pytest.mark.parametrize("size", [WIDE, NARROW])
 
 # Source: WCAG 2.2, success criterion 2.5.5 (enhanced): targets are at least 44 by 44 CSS pixels;
 # controls within a sentence are exempt.
@@ -46,10 +46,18 @@ def open_all(page: Any) -> None:
     page.wait_for_selector("#asked", state="visible")
 
 
-@SIZES
-def test_nothing_runs_over_the_side(open_page: Opener, size: tuple[int, int]) -> None:
-    page = open_page(size=size).page
-    open_all(page)
+@pytest.fixture(scope="module", params=[WIDE, NARROW], ids=["wide", "narrow"])
+def looked(browser: Any, server_url: str, request: pytest.FixtureRequest) -> Iterator[Any]:
+    """Yield a page that is only looked at, with every disclosure of its sheet open."""
+    with opening(browser, server_url) as opened:
+        page = opened(size=request.param).page
+        open_all(page)
+        page.wait_for_timeout(400)  # the names are laid once the map stands still
+        yield page
+
+
+def test_nothing_runs_over_the_side(looked: Any) -> None:
+    page = looked
     for selector in ("html", "body", "#sheet", "#scroll", "#cautions", "#chart"):
         wide, room = page.eval_on_selector(selector, "one => [one.scrollWidth, one.clientWidth]")
         assert wide <= room, selector
@@ -62,10 +70,8 @@ def test_nothing_runs_over_the_side(open_page: Opener, size: tuple[int, int]) ->
     assert outside == []
 
 
-@SIZES
-def test_no_label_is_clipped(open_page: Opener, size: tuple[int, int]) -> None:
-    page = open_page(size=size).page
-    open_all(page)
+def test_no_label_is_clipped(looked: Any) -> None:
+    page = looked
     assert page.eval_on_selector_all("#sheet *, #legend *, #credit, #cautions *", CLIPPED) == []
     texts = boxes(page, "#asked svg text") + boxes(page, ".rose svg text")
     frames = boxes(page, "#asked svg.section:not(.key)") + boxes(page, ".rose svg")
@@ -80,26 +86,22 @@ def test_no_label_is_clipped(open_page: Opener, size: tuple[int, int]) -> None:
         ), text["name"]
 
 
-@SIZES
-def test_map_sheet_and_cautions_do_not_overlap(open_page: Opener, size: tuple[int, int]) -> None:
-    page = open_page(size=size).page
+def test_map_sheet_and_cautions_do_not_overlap(looked: Any) -> None:
+    page = looked
     parts = [boxes(page, selector)[0] for selector in ("#chart", "#sheet", "#cautions")]
     for index, one in enumerate(parts):
         for other in parts[index + 1 :]:
             assert not meet(one, other)
-    assert all(part["bottom"] <= size[1] and part["right"] <= size[0] for part in parts)
+    assert all(part["bottom"] <= page.viewport_size["height"] for part in parts)
+    assert all(part["right"] <= page.viewport_size["width"] for part in parts)
     tools = [boxes(page, selector)[0] for selector in (".tools", "#legend", "#credit")]
     for index, one in enumerate(tools):
         for other in tools[index + 1 :]:
             assert not meet(one, other)
 
 
-@SIZES
-def test_names_on_the_map_do_not_cover_one_another(
-    open_page: Opener, size: tuple[int, int]
-) -> None:
-    page = open_page(size=size).page
-    page.wait_for_timeout(400)  # the names are laid once the map stands still
+def test_names_on_the_map_do_not_cover_one_another(looked: Any) -> None:
+    page = looked
     names = boxes(page, ".site .label:not(.away)")
     assert len(names) >= 1
     frame = boxes(page, "#chart")[0]
@@ -110,10 +112,8 @@ def test_names_on_the_map_do_not_cover_one_another(
             assert not meet(one, other), (one["name"], other["name"])
 
 
-@SIZES
-def test_targets_are_large_enough_for_a_finger(open_page: Opener, size: tuple[int, int]) -> None:
-    page = open_page(size=size).page
-    open_all(page)
+def test_targets_are_large_enough_for_a_finger(looked: Any) -> None:
+    page = looked
     small = [
         (box["name"], box["right"] - box["left"], box["bottom"] - box["top"])
         for box in boxes(page, TARGETS)
@@ -146,11 +146,8 @@ def test_the_sheet_is_pulled_up_by_hand_and_by_keys(open_page: Opener) -> None:
     assert wide <= room
 
 
-@SIZES
-def test_the_cautions_are_shown_in_short_and_whole(
-    open_page: Opener, size: tuple[int, int]
-) -> None:
-    page = open_page(size=size).page
+def test_the_cautions_are_shown_in_short_and_whole(looked: Any) -> None:
+    page = looked
     assert page.is_visible("#cautions summary")
     assert not page.is_visible("#cautions ul")
     page.click("#cautions summary")
@@ -159,6 +156,7 @@ def test_the_cautions_are_shown_in_short_and_whole(
     limits = page.evaluate("() => fetch('/api/catalog').then(a => a.json()).then(c => c.limits)")
     for sentence in limits[1:11]:
         assert sentence.rstrip(".") in whole
+    page.click("#cautions summary")
 
 
 def test_focus_is_seen_on_every_control(open_page: Opener) -> None:
