@@ -194,6 +194,34 @@ def test_an_error_is_shown_in_words(open_page: Opener) -> None:
     assert page.get_attribute("[name=altitude_ft]", "aria-invalid") is None
 
 
+def test_margins_that_leave_nothing_are_said_in_words(open_page: Opener) -> None:
+    page = open_page(expected=REFUSED).page
+    change(page, "altitude_ft", "10")
+    allowed = re.search(r"above (\d+) ft", page.locator("#fault li").inner_text())
+    assert allowed
+    # Half the default arrival height of 1000 ft above the ground there.
+    change(page, "altitude_ft", str(int(allowed[1]) + 500))
+    settled(page)
+    assert "leave nothing within modelled range" in page.inner_text("#headline")
+    assert "does not mean that no landing is possible" in page.inner_text("#headline")
+    assert page.locator(EDGE).count() == 0
+
+
+def test_wind_levels_are_added_and_taken_away(open_page: Opener) -> None:
+    page = open_page().page
+    first = page.locator(".wind").count()
+    page.click("#more-wind")
+    assert page.locator(".wind").count() == first + 1
+    change(page, "wind-1-speed_kt", "33")
+    page.click(".wind >> nth=0 >> button")
+    assert page.input_value("[name=wind-0-speed_kt]") == "33"
+    while page.locator(".wind").count() > 0:
+        page.click(".wind >> nth=0 >> button")
+    assert page.inner_text("#winds") == "Calm at every level."
+    settled(page)
+    page.wait_for_function("() => location.hash.includes('wind=calm')")
+
+
 def test_a_field_without_a_number_is_named_at_once(open_page: Opener) -> None:
     page = open_page().page
     asked: list[str] = []

@@ -74,8 +74,8 @@ export class Chart {
    * @param {import("./state.js").View | null} view
    */
   show(view) {
-    if (view) this.map.setView([view.latitude, view.longitude], view.zoom);
-    else if (this.extent) this.map.fitBounds(this.extent, { padding: [34, 34], maxZoom: 13 });
+    if (view) this.map.setView([view.latitude, view.longitude], view.zoom, { animate: false });
+    else if (this.extent) this.map.fitBounds(this.extent, { padding: [34, 34], maxZoom: 13, animate: false });
   }
 
   /** What the map shows now. */
@@ -93,6 +93,10 @@ export class Chart {
     nearer.addEventListener("click", () => this.map.zoomIn());
     wider.addEventListener("click", () => this.map.zoomOut());
     whole.addEventListener("click", () => this.show(null));
+    window.addEventListener("beforeprint", () => {
+      this.resized();
+      this.show(null);
+    });
     new ResizeObserver(() => this.resized()).observe(this.map.getContainer());
   }
 

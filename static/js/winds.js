@@ -14,8 +14,9 @@ const PARTS = /** @type {const} */ ([
  * @param {() => void} onRemove
  */
 export function showWinds(box, levels, onRemove) {
-  if (box.children.length === levels.length && levels.length > 0) {
-    fillRows(box, levels);
+  const rows = [...box.querySelectorAll(".wind")].map((line) => line.getAttribute("data-level"));
+  if (levels.length > 0 && rows.join() === levels.map((_, index) => index).join()) {
+    fillRows(box, levels); // the rows stay, and with them the focus
     return;
   }
   if (levels.length === 0) {
@@ -51,7 +52,7 @@ function row(index, onRemove) {
       el("span", { class: "unit" }, unit))));
   const remove = el("button", { type: "button", class: "quiet remove",
     "aria-label": `Remove wind level ${index + 1}` }, "\u00d7");
-  const line = el("div", { class: "wind", role: "group", "aria-label": `Wind level ${index + 1}` },
+  const line = el("div", { class: "wind", role: "group", "data-level": index, "aria-label": `Wind level ${index + 1}` },
     ...fields, remove);
   remove.addEventListener("click", () => {
     line.remove();
