@@ -73,7 +73,10 @@ def test_constant_wind_gives_the_exact_disc(tmp_path: Path, name: str, share: fl
         assert forms.area_m2(shape) == pytest.approx(expected_m2, rel=5e-3)  # the customer's 0.5 %
         outside_m = disc.outside_m(*vertices(shape, place))
         assert outside_m.max() <= found.cell_m  # nothing outside by more than one cell
-    assert found.footprint_km2 == pytest.approx(forms.area_m2(found.footprint) / 1e6, rel=1e-4)
+    assert found.footprint_km2 == pytest.approx(
+        forms.area_m2(found.footprint) / 1e6,
+        rel=1e-3,  # the outline is thinned within a cell
+    )
 
 
 def test_disc_on_abutting_tiles_across_the_180th_meridian(tmp_path: Path) -> None:
@@ -175,7 +178,8 @@ def test_first_turn_costs_the_closed_form(tmp_path: Path) -> None:
         # 180 degrees + 2 atan(R/D) (geometry behind Rogers, J. Aircraft 32(2), 1995, 392-397)
         turn_m = (math.pi + 2.0 * math.atan(radius_m / behind_m)) * per_rad_m
         paid_m = alt_m - behind_m / RATIO - got.alt_m
-        assert paid_m == pytest.approx(turn_m, rel=0.02, abs=0.5 * found.cell_m / RATIO)
+        # 2 % (the customer's figure) and half a cell: the label is the cell's, at its centre
+        assert paid_m == pytest.approx(turn_m, abs=0.02 * turn_m + 0.5 * found.cell_m / RATIO)
     ahead = found.explain(*(float(v[0]) for v in place.plane().to_lonlat(
         np.array([0.0]), np.array([4000.0]))))  # fmt: skip
     assert ahead.alt_m == pytest.approx(alt_m - 4000.0 / RATIO, abs=found.cell_m / RATIO)
