@@ -25,7 +25,7 @@ export class Chart {
     this.map.setView([0, 0], 9);
     for (const [name, level] of PANES) this.map.createPane(name).style.zIndex = String(level);
     this.renderers = Object.fromEntries(["shade", "outline", "way"].map((pane) =>
-      [pane, L.svg({ pane, padding: 0.6 })]));
+      [pane, L.svg({ pane, padding: 0.3 })]));
     for (const box of boxes(catalog.terrain)) {
       const style = { pane: "ground", className: "ground", interactive: false };
       L.rectangle([[box.south, box.west], [box.north, box.east]], style).addTo(this.map);

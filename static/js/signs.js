@@ -61,13 +61,16 @@ export class SiteSigns {
    */
   mark(reach) {
     const within = new Set(reach.filter((site) => site.in_range).map((site) => String(site.id)));
+    let changed = false;
     for (const { node, kind, ids } of this.places.values()) {
       const filled = ids.some((id) => within.has(id));
+      if (filled === node.classList.contains("within")) continue;
+      changed = true;
       node.classList.toggle("within", filled);
       node.querySelector("use")?.setAttribute(
         "href", `/static/icons/signs.svg#${kind}-${filled ? "in" : "out"}`);
     }
-    this.lay();
+    if (changed) this.lay();
   }
 
   /** Lay the names anew, once the map stands still. */
