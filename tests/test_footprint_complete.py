@@ -40,12 +40,19 @@ SPOTS = [
     Spot("jacksboro", 0.62, 0.47, 190.0, None, (0.0, 0.0)),
     Spot("jacksboro", 0.30, 0.62, 230.0, 60.0, (4.0, -3.0)),
     Spot("jacksboro", 0.45, 0.40, 260.0, 250.0, (0.0, 0.0), 45.0),
+    Spot("jacksboro", 0.497, 0.275, 203.0, 279.0, (0.0, 0.0)),
+    Spot("jacksboro", 0.777, 0.775, 196.0, None, (0.0, 0.0)),
+    Spot("jacksboro", 0.284, 0.677, 256.0, 138.0, (4.9, -7.3)),
     Spot("aletsch", 0.38, 0.55, 200.0, None, (-5.0, 2.0)),
     Spot("aletsch", 0.60, 0.35, 250.0, 140.0, (0.0, 0.0)),
     Spot("aletsch", 0.25, 0.70, 240.0, 300.0, (3.0, 6.0), 45.0),
+    Spot("aletsch", 0.434, 0.434, 194.0, 284.0, (0.0, 0.0)),
+    Spot("aletsch", 0.687, 0.567, 183.0, 14.0, (0.0, 0.0)),
     Spot("demo", 0.60, 0.55, 200.0, None, (0.0, 0.0)),
     Spot("demo", 0.70, 0.45, 250.0, 200.0, (-4.0, -4.0)),
     Spot("demo", 0.55, 0.70, 230.0, 30.0, (0.0, 0.0), 45.0),
+    Spot("demo", 0.643, 0.45, 241.0, 205.0, (-3.8, 0.2)),
+    Spot("demo", 0.729, 0.484, 177.0, None, (0.0, 0.0)),
 ]
 
 
@@ -127,7 +134,7 @@ def test_brute_force_finds_at_most_three_percent_more(folders: dict[str, Path]) 
         missed += int((bent & ~reach).sum())
         hidden += int((bent & ~straight).sum())
         lines.append(
-            f"{spot.terrain} {spot.east} {spot.north}: {bent.sum()} found, {straight.sum()} straight;"
+            f"{spot.terrain} {spot.east} {spot.north}: {bent.sum()} found, {straight.sum()} direct;"
             f" footprint {reach.sum()}, missed {(bent & ~reach).sum()}"
         )
     print("\n" + "\n".join(lines))
