@@ -29,6 +29,7 @@ BROWSER_ARGUMENTS = [
     "--no-first-run",
 ]
 WIDE, NARROW = (1280, 800), (390, 844)  # a laptop and a phone [px]
+MIDDLE = (960, 640)  # where the size does not matter: quicker to draw [px]
 
 
 def free_port() -> int:
@@ -141,7 +142,7 @@ Opener = Callable[..., Opened]
 def opening(browser: Any, server_url: str) -> Iterator[Opener]:
     """Yield a function that opens the page; at the end no error and no foreign request was seen.
 
-    ``opened(address="", size=WIDE, expected="", prepare=None)``: `expected` is a piece of the
+    ``opened(address="", size=MIDDLE, expected="", prepare=None)``: `expected` is a piece of the
     console errors that belong to the test, `prepare` is called with the page before it loads.
     """
     contexts: list[Any] = []
@@ -149,7 +150,7 @@ def opening(browser: Any, server_url: str) -> Iterator[Opener]:
 
     def opened(
         address: str = "",
-        size: tuple[int, int] = WIDE,
+        size: tuple[int, int] = MIDDLE,
         expected: str = "",
         prepare: Callable[[Any], None] | None = None,
     ) -> Opened:
