@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 from shapely.geometry import MultiPolygon
 
 from geo import explain as _explain
-from geo import front, rays
+from geo import front, rays, ring
 from geo import layout as k
 from geo import paths as _paths
 from geo.answers import Explanation, GlidePath, ProfilePoint, SiteReach
@@ -120,6 +120,11 @@ class Footprint:
         return _ranges(self)
 
     @cached_property
+    def straight_ranges(self) -> list[tuple[float, float]]:
+        """Farthest place by one straight glide on 36 true bearings: (bearing [rad], [m])."""
+        return ring_ranges(self.glide, self.grid, self.labels.top_m)
+
+    @cached_property
     def sites(self) -> list[SiteReach]:
         """Landing sites within the window, nearest first."""
         return _explain.sites_in_reach(self, self.landing_sites)
@@ -187,7 +192,7 @@ def solve(
             "There is no terrain at this position.", "position", "a place on the terrain loaded"
         )
     glide = prepare(case, frame, ground_m)
-    grid = _grid(store, glide, frame, limits)
+    grid = grid_for(store, glide, frame, limits)
     window = store.window(frame, grid.col0, grid.row0, grid.n_cols, grid.n_rows, grid.cell_m)
     labels = label(glide, grid, window.top_m, cancel, bend)
     straight = to_lonlat(trace(labels.straight), frame, grid.col0, grid.row0, grid.cell_m)
@@ -201,7 +206,7 @@ def solve(
     )  # fmt: skip
 
 
-def _grid(store: TerrainStore, glide: Glide, frame: Frame, limits: SolveLimits) -> Grid:
+def grid_for(store: TerrainStore, glide: Glide, frame: Frame, limits: SolveLimits) -> Grid:
     """Return the window that the glide can touch, down to the lowest ground sampled in it."""
     case = glide.case
     x_m, y_m = frame.to_xy_m(case.lon_deg, case.lat_deg)
@@ -348,7 +353,42 @@ def _ranges(answer: Footprint) -> list[tuple[float, float]]:
     return found
 
 
+def ring_ranges(glide: Glide, grid: Grid, top: NDArray[np.float32]) -> list[tuple[float, float]]:
+    """Return how far one straight glide reaches on 36 true bearings: (bearing [rad], [m]).
+
+    One track for each cell of the edge is flown, in strides over blocks of lower ground.
+
+    Parameters
+    ----------
+    glide, grid
+        The case in the frame, and its window.
+    top
+        Highest point of each cell [m], +inf where blocked, shape ``(n_rows, n_cols)``.
+    """
+    need_m = arrival_m(glide.case)
+    par = _parameters(glide, grid, min(float(top.min()), glide.case.alt_m) + need_m)
+    anchors, run = np.zeros((4, k.N_ANCHOR)), glide.run / grid.cell_m
+    n_roots = _roots(glide, grid, top, run, par, anchors)
+    blocks = ring.block_maxima(top)
+    longest = np.zeros(N_RANGES)
+    for root in range(n_roots):
+        count = int(min(anchors[root, k.COUNT], pi / max(anchors[root, k.STEP], 1e-9)))
+        if glide.track_rad is None:
+            count = int(anchors[root, k.COUNT])
+        states = rays.starts(glide.air, par, run.shape[1], anchors, root, max(count, 1))
+        out = np.empty((len(states), 2))
+        ring.ring(top, blocks, run, par, states, need_m, par[k.CLEARANCE_M], out)
+        states, out = states[out[:, 1] > 0.0], out[out[:, 1] > 0.0]
+        east = states[:, k.SX] + out[:, 1] * states[:, k.DX] - anchors[0, k.AX]
+        north = states[:, k.SY] + out[:, 1] * states[:, k.DY] - anchors[0, k.AY]
+        bearing = np.arctan2(east, north) - glide.convergence_rad
+        sector = np.rint(bearing * N_RANGES / (2 * pi)).astype(np.int64) % N_RANGES
+        np.maximum.at(longest, sector, np.hypot(east, north) * grid.cell_m)
+    return [(2 * pi * i / N_RANGES, float(longest[i])) for i in range(N_RANGES)]
+
+
 def warm_up(store: TerrainStore, case: GlideCase) -> None:
     """Compile every kernel by solving a small case, and explain one place of it."""
     answer = solve(store, case)
     answer.explain(case.lon_deg, case.lat_deg)
+    _ = answer.straight_ranges

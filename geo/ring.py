@@ -1,7 +1,7 @@
 """Numba kernel of the ring: how far each track can be flown straight, for every track at once.
 
-Rays skip whole blocks of terrain whose highest point lies far enough below them. The answer
-equals that of `geo.rays.cast` within a cell; it gives ranges, not labels.
+Rays skip whole blocks of terrain whose highest point lies far enough below them and walk the
+cells of the others. The answer equals that of `geo.rays.cast`; it gives ranges, not labels.
 """
 
 from __future__ import annotations
@@ -13,22 +13,23 @@ import numpy as np
 from numba import njit
 
 from geo.layout import CAP, DX, DY, LEVEL0_M, LEVEL_STEP_M, SX, SY, SZ, TRACK
-from geo.rays import run_at
+from geo.rays import glide_alt, run_at
 
-BLOCK = 16  # cells along the edge of a small block
-SUPER = 128  # cells along the edge of a large block
+BLOCK = 20  # cells along the edge of a block
+NUDGE = 1e-6  # cells; puts a point on an edge into the next cell
 
 
 @njit(cache=True, nogil=True)
-def block_maxima(top: Any_, size: int) -> Any_:
-    """Return the highest cell of each block of `size` x `size` cells, shape rounded up."""
+def block_maxima(top: Any_) -> Any_:
+    """Return the highest cell of each block of `BLOCK` x `BLOCK` cells, shape rounded up."""
     rows, cols = top.shape
-    out = np.full(((rows + size - 1) // size, (cols + size - 1) // size), -np.inf, dtype=np.float32)
+    shape = ((rows + BLOCK - 1) // BLOCK, (cols + BLOCK - 1) // BLOCK)
+    out = np.full(shape, -np.inf, dtype=np.float32)
     for r in range(rows):
-        line = out[r // size]
+        line = out[r // BLOCK]
         for b in range(line.shape[0]):
             high = line[b]
-            for c in range(b * size, min((b + 1) * size, cols)):
+            for c in range(b * BLOCK, min((b + 1) * BLOCK, cols)):
                 high = max(high, top[r, c])
             line[b] = high
     return out
@@ -36,29 +37,41 @@ def block_maxima(top: Any_, size: int) -> Any_:
 
 @njit(cache=True, nogil=True)
 def ring(
-    top: Any_, blocks: Any_, supers: Any_, run: Any_, par: Any_, states: Any_, need_m: float,
+    top: Any_, blocks: Any_, run: Any_, par: Any_, states: Any_, need_m: float,
     clearance_m: float, out: Any_,
 ) -> None:  # fmt: skip
     """Write to `out` (n, 2) how far each ray [cells] stays clear, and where it last arrives high.
 
     Parameters
     ----------
-    top, blocks, supers
+    top, blocks
         Highest point of each cell and of each block [m].
     states
         Ray starts, shape ``(n, N_STATE)``; NaN where no track is held.
     need_m, clearance_m
         Height over the ground that counts as arrival, and that must be kept [m].
     """
+    pair = np.empty(2)
     for i in range(states.shape[0]):
         out[i, 0], out[i, 1] = 0.0, 0.0
-        if states[i, DX] == states[i, DX]:
-            _one(top, blocks, supers, run, par, states[i], need_m, clearance_m, out[i])
+        if states[i, DX] != states[i, DX]:
+            continue
+        end = _clear_until(top, blocks, run, par, states[i], clearance_m, pair)
+        out[i, 0] = end
+        back = 64.0
+        while end > 0.0:
+            begin = max(end - back, 0.0)
+            z = glide_alt(run, par, states[i, SZ], states[i, TRACK], begin)
+            _walk(top, run, par, states[i], begin, z, end, clearance_m, need_m, pair)
+            out[i, 1] = pair[1]
+            if pair[1] > 0.0 or back >= end:
+                break
+            back *= 4.0
 
 
 @njit(cache=True, nogil=True)
-def _exit(x: float, y: float, state: Any_, size: int) -> float:
-    """Return how far [cells] from (x, y) the ray leaves its block of `size` cells."""
+def _leaves(x: float, y: float, state: Any_, size: int) -> float:
+    """Return how far [cells] from (x, y) the ray leaves its square of `size` cells."""
     t = 1e30
     if abs(state[DX]) > 1e-12:
         edge = (floor(x / size) + (1.0 if state[DX] > 0.0 else 0.0)) * size
@@ -70,40 +83,71 @@ def _exit(x: float, y: float, state: Any_, size: int) -> float:
 
 
 @njit(cache=True, nogil=True)
-def _one(
-    top: Any_, blocks: Any_, supers: Any_, run: Any_, par: Any_, state: Any_, need_m: float,
-    clearance_m: float, out: Any_,
-) -> None:  # fmt: skip
+def _clear_until(
+    top: Any_, blocks: Any_, run: Any_, par: Any_, state: Any_, clearance_m: float, pair: Any_
+) -> float:
+    """Return how far [cells] the ray keeps the clearance, block by block."""
     rows, cols = top.shape
     level = min(int((state[SZ] - par[LEVEL0_M]) / par[LEVEL_STEP_M]), run.shape[0] - 1)
     per_m = run_at(run, level, state[TRACK]) if level >= 0 else 0.0
-    z_at, t_at, t = state[SZ], 0.0, 0.0
+    z_at, t_at, t, z_out = state[SZ], 0.0, 0.0, state[SZ]
     level_end = (z_at - par[LEVEL0_M] - level * par[LEVEL_STEP_M]) * per_m
-    while per_m > 0.0:
-        # a nudge along the ray puts the point inside the next cell, not on its edge
-        x, y = state[SX] + (t + 1e-7) * state[DX], state[SY] + (t + 1e-7) * state[DY]
-        c, r = int(floor(x)), int(floor(y))
-        if r < 0 or c < 0 or r >= rows or c >= cols:
-            return
-        size = SUPER
-        while True:
-            t_next = t + 1e-7 + _exit(x, y, state, size)
-            while t_next > level_end and per_m > 0.0:
-                z_at, t_at, level = z_at - (level_end - t_at) / per_m, level_end, level - 1
-                per_m = run_at(run, level, state[TRACK]) if level >= 0 else 0.0
-                level_end = t_at + par[LEVEL_STEP_M] * per_m
-            z = min(z_at - (t_next - t_at) / per_m, state[CAP]) if per_m > 0.0 else -1e30
-            if size == 1:
-                break
-            high = (
-                supers[r // SUPER, c // SUPER] if size == SUPER else blocks[r // BLOCK, c // BLOCK]
-            )
-            if z >= high + need_m:
-                break
-            size = BLOCK if size == SUPER else 1
-        if size == 1 and z < top[r, c] + clearance_m:
-            return
+    while True:
+        x, y = state[SX] + (t + NUDGE) * state[DX], state[SY] + (t + NUDGE) * state[DY]
+        if not (0.0 <= x < cols and 0.0 <= y < rows):
+            return t
+        t_next, z_in = t + NUDGE + _leaves(x, y, state, BLOCK), z_out
+        while t_next > level_end and per_m > 0.0:
+            z_at, t_at, level = z_at - (level_end - t_at) / per_m, level_end, level - 1
+            per_m = run_at(run, level, state[TRACK]) if level >= 0 else 0.0
+            level_end = t_at + par[LEVEL_STEP_M] * per_m
+        z_out = z_at - (t_next - t_at) / per_m if per_m > 0.0 else -1e30
+        if min(z_out, state[CAP]) < blocks[int(y) // BLOCK, int(x) // BLOCK] + clearance_m:
+            _walk(top, run, par, state, t, z_in, t_next, clearance_m, 1e30, pair)
+            if pair[0] < t_next - 2.0 * NUDGE:
+                return pair[0]
         t = t_next
-        out[0] = t
-        if size > 1 or z >= top[r, c] + need_m:
-            out[1] = t
+
+
+@njit(cache=True, nogil=True)
+def _walk(
+    top: Any_, run: Any_, par: Any_, state: Any_, t: float, z: float, t_end: float,
+    clearance_m: float, need_m: float, pair: Any_,
+) -> None:  # fmt: skip
+    """Walk cells from `t`, at altitude `z`, to `t_end`.
+
+    Writes where the clearance ends and where the ray last arrives high.
+    """
+    pair[0], pair[1] = t, 0.0
+    gap_x = 1.0 / max(abs(state[DX]), 1e-12)
+    gap_y = 1.0 / max(abs(state[DY]), 1e-12)
+    x, y = state[SX] + (t + NUDGE) * state[DX], state[SY] + (t + NUDGE) * state[DY]
+    c, r = int(floor(x)), int(floor(y))
+    next_x = t + NUDGE + ((c + 1 - x) if state[DX] > 0 else (x - c)) * gap_x
+    next_y = t + NUDGE + ((r + 1 - y) if state[DY] > 0 else (y - r)) * gap_y
+    level = min(int((z - par[LEVEL0_M]) / par[LEVEL_STEP_M]), run.shape[0] - 1)
+    per_m = run_at(run, level, state[TRACK]) if level >= 0 else 0.0
+    level_end = t + (z - par[LEVEL0_M] - level * par[LEVEL_STEP_M]) * per_m
+    while t < t_end - NUDGE and per_m > 0.0:
+        if r < 0 or c < 0 or r >= top.shape[0] or c >= top.shape[1]:
+            return
+        t_next = min(next_x, next_y)
+        while t_next > level_end and per_m > 0.0:
+            z, t, level = z - (level_end - t) / per_m, level_end, level - 1
+            per_m = run_at(run, level, state[TRACK]) if level >= 0 else 0.0
+            level_end = t + par[LEVEL_STEP_M] * per_m
+        if per_m <= 0.0:
+            return
+        z, t = z - (t_next - t) / per_m, t_next
+        here = min(z, state[CAP])
+        if here < top[r, c] + clearance_m:
+            return
+        pair[0] = t
+        if here >= top[r, c] + need_m:
+            pair[1] = t
+        if next_x < next_y:
+            c += 1 if state[DX] > 0 else -1
+            next_x += gap_x
+        else:
+            r += 1 if state[DY] > 0 else -1
+            next_y += gap_y
