@@ -33,6 +33,7 @@ class Result:
     clearance_m: float  # least height above the surface less the clearance
     clearance_lonlat: tuple[float, float]
     miss_m: float
+    early_s: float  # by how much the path turns before the reaction time is over
 
     @property
     def is_false(self) -> bool:
@@ -59,7 +60,8 @@ class Score:
             f" {sum(r.is_false for r in self.results)} false;"
             f" arrival against claim {arrivals.min():.1f} / {np.median(arrivals):.1f} ft"
             f" (worst / median), least clearance to spare {gaps.min():.1f} ft,"
-            f" largest miss {max(r.miss_m for r in self.results):.0f} m"
+            f" largest miss {max(r.miss_m for r in self.results):.0f} m,"
+            f" {sum(r.early_s > 0.5 for r in self.results)} turn too early"
         ]
         worst = sorted(self.results, key=lambda r: min(r.arrival_m, r.clearance_m))[:8]
         lines += [
@@ -151,7 +153,26 @@ def judged(
         float(height_m[low]) - case.margins.clearance_m,
         (float(lon[low]), float(lat[low])),
         flight.miss_m,
+        _early_s(found, path, plane),
     )
+
+
+def _early_s(found: Footprint, path: GlidePath, plane: LocalPlane) -> float:
+    """Return by how much [s] the first turn comes before the reaction time is over."""
+    case = found.case
+    if case.track_rad is None or len(path.points) < 3:
+        return 0.0
+    legs, turns = legs_and_turns(path, plane)
+    east, north = (float(v[0]) for v in case.wind.at(np.array([case.alt_m])))
+    if len(turns) == 0:
+        return 0.0
+    sigma = (1.0 - 0.0065 * case.alt_m / 288.15) ** 4.255880  # ICAO Doc 7488/3
+    along = east * math.sin(case.track_rad) + north * math.cos(case.track_rad)
+    cross = east * math.cos(case.track_rad) - north * math.sin(case.track_rad)
+    over = case.polar.best_glide_eas_mps / math.sqrt(sigma)
+    ground = along + math.sqrt(over * over * 0.988 - cross * cross) - case.margins.wind_error_mps
+    flown_m = math.hypot(legs[0, 2] - legs[0, 0], legs[0, 3] - legs[0, 1])
+    return found.figures.reaction_s - flown_m / ground
 
 
 def cells_to_fly(

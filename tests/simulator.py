@@ -36,7 +36,6 @@ PATH_TIME_S = 1.0  # time in which the path angle follows its command
 HEADING_TIME_S = 2.5  # time in which a heading error is taken out
 CORRECTION_BANK_RAD = math.radians(15.0)  # largest bank used to follow a straight leg
 LOOKAHEAD_M = 250.0  # the pilot steers for a point this far ahead on the leg
-NEAR_M = 150.0  # a leg shorter than this gives no direction to turn to
 OVERTURN_RAD = math.radians(20.0)  # most that a pilot turns beyond the stated angle
 HOLD_M = 40.0  # so near its end the leg's own direction is held
 
@@ -256,15 +255,14 @@ def _leg_track(state, leg):
 def _turn_left_rad(state, leg, turn, turned, par, wind):
     """Return what is left of a turn [rad]: until the ground track points at the leg's end.
 
-    Towards an end so near that it may lie inside the circle, the stated angle is turned; no turn
-    goes on more than `OVERTURN_RAD` past its stated angle.
+    Over an end so near that it gives no direction the stated angle is turned, and no turn goes on
+    more than `OVERTURN_RAD` past its stated angle (the end may lie inside the circle).
     """
     stated = max(abs(turn[1]) - turned, 0.0)
-    if (
-        math.hypot(leg[2] - leg[0], leg[3] - leg[1]) < NEAR_M
-        or turned > abs(turn[1]) + OVERTURN_RAD
-    ):
+    if math.hypot(leg[2] - state[0], leg[3] - state[1]) < HOLD_M:
         return stated
+    if turned > abs(turn[1]) + OVERTURN_RAD:
+        return 0.0
     sign = 1.0 if turn[1] >= 0.0 else -1.0
     track = math.atan2(leg[2] - state[0], leg[3] - state[1])
     left = sign * _wrapped(_heading_for(track, state, par, wind) - state[5])
@@ -304,6 +302,7 @@ def fly_legs(legs, turns, state, par, wind, out):
     """
     leg, turning, turned, bank, mark = 0, False, 0.0, 0.0, 0
     last = legs.shape[0] - 1
+    against, par = par[AGAINST], par.copy()  # a wind against the track: on straight tracks only
     if last > 0 and _remaining_m(state, legs[0]) < 1.0:  # no leg to roll in on: half the roll done
         bank = 0.5 * math.copysign(turns[0, 0], turns[0, 1])
     for k in range(out.shape[0]):
@@ -323,6 +322,7 @@ def fly_legs(legs, turns, state, par, wind, out):
             if leg == last and (_remaining_m(state, legs[last]) <= 0.0 or state[2] < -500.0):
                 return k + 1, mark
             bank_wanted, eas = _straight_commands(state, legs[leg], par, wind)
+        par[AGAINST] = 0.0 if turning else against
         roll = ROLL_RATE_RAD_S * STEP_S
         bank = min(max(bank_wanted, bank - roll), bank + roll)
         before = state[5]

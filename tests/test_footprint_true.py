@@ -162,6 +162,13 @@ def test_none_is_worse_than_fifty_feet(score: Score) -> None:
     assert worst_m >= -WORST_M, score.report()
 
 
-def test_every_flight_passes_over_its_place(score: Score) -> None:
-    # half a cell's diagonal and the sway of the pilot: a claim is about the place, not beside it
-    assert max(result.miss_m for result in score.results) <= 45.0, score.report()
+def test_flights_pass_over_their_places(score: Score) -> None:
+    # a claim is about the place: within two cells, but for an end inside the last circle
+    beside = sum(result.miss_m > 60.0 for result in score.results)
+    assert beside <= len(score.results) / 1000, score.report()
+
+
+def test_no_path_turns_before_the_reaction_time_is_over(score: Score) -> None:
+    # design of the first seconds: reaction is flown straight on along the track at failure
+    hasty = sum(result.early_s > 0.5 for result in score.results)  # 0.5 s: wind along the leg
+    assert hasty == 0, score.report()
