@@ -26,11 +26,12 @@ export class Chart {
     for (const [name, level] of PANES) this.map.createPane(name).style.zIndex = String(level);
     this.renderers = Object.fromEntries(["shade", "outline", "way"].map((pane) =>
       [pane, L.svg({ pane, padding: 0.3 })]));
-    for (const box of boxes(catalog.terrain)) {
-      const style = { pane: "ground", className: "ground", interactive: false };
-      L.rectangle([[box.south, box.west], [box.north, box.east]], style).addTo(this.map);
-    }
-    relief(boxes(catalog.terrain)).addTo(this.map);
+    const grounds = boxes(catalog.terrain);
+    const corners = grounds.map((box) => [[box.south, box.west], [box.north, box.east]]);
+    const style = { pane: "ground", className: "ground", interactive: false };
+    for (const pair of corners) L.rectangle(pair, style).addTo(this.map);
+    this.home = corners[1]; // the first file, on this turn of the globe
+    relief(grounds).addTo(this.map);
     this.answer = L.layerGroup().addTo(this.map);
     this.way = L.layerGroup().addTo(this.map);
     this.signs = new SiteSigns(this.map, catalog.sites, this.renderers.outline);
@@ -69,13 +70,15 @@ export class Chart {
   }
 
   /**
-   * Show the whole outline, or what `view` says.
+   * Show what `view` says, or the whole outline, or where there is none the first terrain.
    *
    * @param {import("./state.js").View | null} view
    */
   show(view) {
     if (view) this.map.setView([view.latitude, view.longitude], view.zoom, { animate: false });
-    else if (this.extent) this.map.fitBounds(this.extent, { padding: [34, 34], maxZoom: 13, animate: false });
+    else if (this.extent ?? this.home) {
+      this.map.fitBounds(this.extent ?? this.home, { padding: [34, 34], maxZoom: 13, animate: false });
+    }
   }
 
   /** What the map shows now. */

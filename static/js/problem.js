@@ -54,7 +54,7 @@ export function faultOf(status, body, retryAfter) {
   const wait = retryAfter ? ` Ask again in ${retryAfter} s.` : " Ask again in a moment.";
   const fields = (Array.isArray(body?.errors) ? body.errors : []).map((/** @type {any} */ entry) => ({
     name: String(entry.pointer ?? ""),
-    text: [entry.detail === body.detail ? "" : sentence(entry.detail), entry.allowed ? `Allowed: ${sentence(entry.allowed)}` : ""]
+    text: [entry.detail === body.detail ? "" : sentence(entry.detail), entry.allowed ? `Allowed is ${sentence(entry.allowed)}` : ""]
       .filter(Boolean).join(" "),
   }));
   return {
