@@ -192,13 +192,17 @@ def solve(
             "There is no terrain at this position.", "position", "a place on the terrain loaded"
         )
     glide = prepare(case, frame, ground_m)
+    _check(cancel)
     grid = grid_for(store, glide, frame, limits)
     window = store.window(frame, grid.col0, grid.row0, grid.n_cols, grid.n_rows, grid.cell_m)
+    _check(cancel)
     labels = label(glide, grid, window.top_m, cancel, bend)
     straight = to_lonlat(trace(labels.straight), frame, grid.col0, grid.row0, grid.cell_m)
     outline = straight
+    _check(cancel)
     if bend:
         outline = to_lonlat(trace(labels.reach), frame, grid.col0, grid.row0, grid.cell_m)
+    _check(cancel)
     return Footprint(
         case, glide, grid, store, labels, ground_m,
         outline, straight,
@@ -216,6 +220,11 @@ def grid_for(store: TerrainStore, glide: Glide, frame: Frame, limits: SolveLimit
     lowest_m = min(float(np.nanmin(ground, initial=np.inf)), case.alt_m) - LOWEST_SPARE_M
     reach = reach_box_m(glide, lowest_m + arrival_m(case))
     return choose_grid(frame, float(x_m), float(y_m), reach, limits, case.detail)
+
+
+def _check(cancel: NDArray[np.uint8]) -> None:
+    if cancel[0]:
+        raise Cancelled
 
 
 def arrival_m(case: GlideCase) -> float:
@@ -259,13 +268,13 @@ def label(
     n_roots = _roots(glide, grid, top, run, par, anchors)
     touched = np.empty(0, dtype=np.int32)
     for root in range(n_roots):
-        front.fan(top, alt, ray, run, glide.air, par, anchors, root, touched, True)
+        front.fan(top, alt, ray, run, glide.air, par, anchors, root, touched, True, cancel)
+    _check(cancel)
     straight = alt >= top + np.float32(need_m)
     n_anchors = front.spread(
         top, alt, ray, run, glide.air, par, anchors, n_roots, cancel, ANCHOR_SPACING_CELLS
     ) if n_roots and bend else n_roots  # fmt: skip
-    if n_anchors < 0 or cancel[0]:
-        raise Cancelled
+    _check(cancel)
     reach = alt >= top + np.float32(need_m)
     return Labels(top, alt, ray, anchors[:n_anchors].copy(), run, par, straight, reach)
 

@@ -67,12 +67,12 @@ from geo.rays import (
 @njit(cache=True, nogil=True)
 def fan(
     top: Any_, alt: Any_, ray: Any_, run: Any_, air: Any_, par: Any_, anchors: Any_, a: int,
-    touched: Any_, thorough: bool,
+    touched: Any_, thorough: bool, cancel: Any_,
 ) -> int:  # fmt: skip
     """Cast every ray of anchor `a` and return how many labels were raised.
 
     The arc is flown step by step and kept clear; where it meets the clearance the fan ends.
-    `thorough` casts all rays to their end; otherwise one ray of each block is tried first.
+    `cancel` ends it early. `thorough` casts all rays to their end; otherwise one ray of each block is tried first.
     """
     anchor = anchors[a]
     n, offset = int(anchor[COUNT]), int(anchor[OFFSET])
@@ -80,7 +80,7 @@ def fan(
     arcs, state = np.empty((BLOCK_RAYS, N_ARC)), np.empty(N_STATE)
     half = int(np.pi / anchor[STEP]) if anchor[TURNS] > 0.0 else n
     n_touched, k, open_arc = 0, 0, True
-    while k < n and open_arc:
+    while k < n and open_arc and not cancel[0]:
         m = 0
         while m < BLOCK_RAYS and k + m < n:
             if not clear(top, par, arc[0], arc[1], arc[2] - arc[DIVE]):
@@ -207,7 +207,9 @@ def spread(
                 anchor[:] = anchors[n_anchors - 1]
                 anchor[OFFSET] += anchor[COUNT]
             anchor[SIDE] = 1.0 if bit == 1 else -1.0
-            n_touched = fan(top, alt, ray, run, air, par, anchors, n_anchors, touched, False)
+            n_touched = fan(
+                top, alt, ray, run, air, par, anchors, n_anchors, touched, False, cancel
+            )
             anchor[FOUND] = n_touched
             n_anchors += 1
             for j in range(min(n_touched, touched.shape[0])):

@@ -85,7 +85,7 @@ def _leaves(x: float, y: float, state: Any_, size: int) -> float:
 @njit(cache=True, nogil=True)
 def _clear_until(
     top: Any_, blocks: Any_, run: Any_, par: Any_, state: Any_, clearance_m: float, pair: Any_
-) -> float:
+) -> Any_:
     """Return how far [cells] the ray keeps the clearance, block by block."""
     rows, cols = top.shape
     level = min(int((state[SZ] - par[LEVEL0_M]) / par[LEVEL_STEP_M]), run.shape[0] - 1)

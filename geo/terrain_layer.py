@@ -28,7 +28,7 @@ SQUARE = 256  # side of the squares of posts that single places are read from
 FAR = 1e9  # posts: no raster is so large
 EDGE = 1e-6  # posts: a place so near a line of posts lies on it
 NUDGES = [(du, dv) for du in (0.0, -EDGE, EDGE) for dv in (0.0, -EDGE, EDGE)][1:]
-SQUARES_KEPT = 128  # of each layer, 32 MB
+SQUARES_KEPT = 256  # of each layer, 64 MB: as many as the widest solve samples
 
 _GEOD = Geod(ellps="WGS84")
 _LOCAL = threading.local()  # Transformer objects must not be shared between threads
@@ -62,7 +62,7 @@ class Squares:
 
     def __init__(self, read: Callable[[Box], NDArray[Any] | None]) -> None:
         self._read = read
-        self._kept: OrderedDict[tuple[int, int], NDArray[Any] | None] = OrderedDict()
+        self._kept: OrderedDict[tuple[int, int], NDArray[Any]] = OrderedDict()
         self._lock = threading.Lock()
 
     def get(self, row: int, col: int) -> NDArray[Any] | None:
@@ -74,6 +74,8 @@ class Squares:
                 return self._kept[key]
         j, i = row * SQUARE, col * SQUARE
         numbers = self._read((j, j + SQUARE + 1, i, i + SQUARE + 1))
+        if numbers is None:  # off the raster: known at once, not worth a place
+            return None
         with self._lock:
             self._kept[key] = numbers
             while len(self._kept) > SQUARES_KEPT:
