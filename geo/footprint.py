@@ -21,7 +21,7 @@ from geo import front, rays, ring
 from geo import layout as k
 from geo import paths as _paths
 from geo.answers import Explanation, GlidePath, ProfilePoint, SiteReach
-from geo.case import GlideCase, SolveLimits
+from geo.case import FT_M, KT_MPS, GlideCase, SolveLimits
 from geo.frame import Frame, frame_for
 from geo.glide import LEVEL_STEP_M, LOWEST_GROUND_M, Glide, GlideFigures, prepare
 from geo.grid import Grid, choose_grid, reach_box_m
@@ -41,6 +41,7 @@ JUMP_CELLS = 3.0  # so many cells, is worth a new bend
 ROOM_M = 5.0  # height above the clearance that a bend must have to spare
 DETOUR_CELLS = 12.0  # cells beyond the turn that a ray may fly before it must find new ground
 N_RANGES = 36
+RIDGE_WIND_KT = 20.0  # from here on the lee of ridges is warned of; common practice
 LOWEST_SPARE_M = 30.0  # ground may be this much lower between the places sampled
 
 
@@ -333,7 +334,7 @@ def _roots(
 
 def _sentences(store: TerrainStore, glide: Glide, grid: Grid, labels: Labels) -> list[str]:
     """Return what this answer leaves out, in sentences."""
-    sentences = [*glide.notes, *store.notes]
+    sentences = [*glide.notes, *store.notes, *_ridge_wind(glide, labels)]
     if not labels.reach.any():
         sentences.append(
             "These margins leave nothing within modelled range here. That does not mean that no"
@@ -342,6 +343,26 @@ def _sentences(store: TerrainStore, glide: Glide, grid: Grid, labels: Labels) ->
     if len(labels.anchors) >= MAX_ANCHORS - 1:
         sentences.append("The search for bent paths was cut short; more ground may be in reach.")
     return [*sentences, f"Solved on cells of {grid.cell_m:.0f} m."]
+
+
+def _ridge_wind(glide: Glide, labels: Labels) -> list[str]:
+    """Return a warning where the wind at the highest terrain in the window is strong."""
+    solid = labels.top_m[np.isfinite(labels.top_m)]
+    if solid.size == 0:
+        return []
+    top_m = np.array([float(solid.max())])
+    east, north = glide.case.wind.at(top_m)
+    speed_kt = float(np.hypot(east, north)[0]) / KT_MPS
+    if speed_kt < RIDGE_WIND_KT:
+        return []
+    margins = glide.case.margins
+    return [
+        f"The wind at ridge level is {speed_kt:.0f} kt: the air can sink fast in the lee of ridges."
+        f" This answer allows {margins.downdraft_mps * 60 / FT_M:.0f} ft/min of downdraft,"
+        f" {margins.wind_error_mps / KT_MPS:.0f} kt of wind error and"
+        f" {margins.clearance_m / FT_M:.0f} ft of clearance; usual over hills are 10 kt, and 500 ft"
+        " near ridges."
+    ]
 
 
 def _ranges(answer: Footprint) -> list[tuple[float, float]]:

@@ -108,7 +108,7 @@ def prepare(case: GlideCase, frame: Frame, ground_m: float) -> Glide:
     notes = _glide_notes(case, table)
     return Glide(
         case, table, np.ascontiguousarray(run), np.ascontiguousarray(air), start_alt_m, track, turn,
-        _figures(case, table, reaction_s), tuple(notes),
+        _figures(case, table, track, reaction_s), tuple(notes),
     )  # fmt: skip
 
 
@@ -123,11 +123,18 @@ def _speed_change_m(case: GlideCase) -> float:
     return height_m if height_m < 0.0 else height_m * min(case.margins.excess_speed_credit, 0.5)
 
 
-def _figures(case: GlideCase, table: GlideTable, reaction_s: float) -> GlideFigures:
+def _figures(
+    case: GlideCase, table: GlideTable, track_rad: float | None, reaction_s: float
+) -> GlideFigures:
     tas = float(table.tas_mps[-1])
+    speed_mps = case.polar.best_glide_eas_mps
+    if track_rad is not None and case.speed_policy == "wind":
+        n_tracks = len(table.track_rad)
+        along = table.speed_eas_mps[-1, round(track_rad * n_tracks / (2 * pi)) % n_tracks]
+        speed_mps = float(along) if np.isfinite(along) else speed_mps
     return GlideFigures(
         best_glide_eas_mps=case.polar.best_glide_eas_mps,
-        speed_eas_mps=case.polar.best_glide_eas_mps,
+        speed_eas_mps=speed_mps,
         ratio_record=case.polar.ratio,
         ratio_used=table.ratio,
         sink_mps=float(table.sink_mps[-1]) + case.margins.downdraft_mps,

@@ -52,7 +52,7 @@ def emit(name: str, value: float, unit: str, against: float | None = None, cells
 
 
 def case_at(alt_m: float) -> GlideCase:
-    """Return the case of the benchmark at an altitude [m]: default margins, a track, three winds."""
+    """Return the case of the benchmark at an altitude [m]: a track, three winds."""
     record = load_records(DATA / "aircraft")[AIRCRAFT]
     levels = [(ft * FT_M, np.radians(deg), kt * KT_MPS) for ft, deg, kt in WIND]
     return GlideCase(
