@@ -198,7 +198,8 @@ def test_a_void_breaks_the_lines_of_a_section(runner: Any) -> None:
         """
         const { plot } = await use("profile");
         const point = (along_nm, ground_ft) => ({ along_nm, ground_ft,
-          glide_ft: 1000 - 100 * along_nm, required_ft: ground_ft === null ? null : ground_ft + 200 });
+          glide_ft: 1000 - 100 * along_nm,
+          required_ft: ground_ft === null ? null : ground_ft + 200 });
         const lines = plot(
           [point(0, 0), point(1, 100), point(2, null), point(3, 300), point(4, 500)],
           { left: 0, right: 400, top: 0, bottom: 100 });
