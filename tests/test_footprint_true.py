@@ -13,6 +13,8 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+import shapely
+from scipy.ndimage import binary_dilation
 
 from geo.case import GlideCase, Margins, SolveLimits
 from geo.footprint import Footprint, solve
@@ -172,3 +174,20 @@ def test_no_path_turns_before_the_reaction_time_is_over(score: Score) -> None:
     # design of the first seconds: reaction is flown straight on along the track at failure
     hasty = sum(result.early_s > 0.5 for result in score.results)  # 0.5 s: wind along the leg
     assert hasty == 0, score.report()
+
+
+@pytest.mark.parametrize("name", ["demo", "jacksboro", "aletsch"])
+def test_outlines_show_no_ground_beyond_one_cell(grounds: dict[str, Ground], name: str) -> None:
+    ground = grounds[name]
+    case = case_of(DRAWS[0], ground, SourceSurface(ground.file))
+    found = solve(TerrainStore(ground.folder), case, limits=SolveLimits())
+    grid, reach = found.grid, np.asarray(found.labels.reach)
+    rows, cols = np.nonzero(~binary_dilation(reach, np.ones((3, 3))))
+    lon, lat = grid.frame.to_lonlat(
+        (grid.col0 + cols + 0.5) * grid.cell_m, (grid.row0 + rows + 0.5) * grid.cell_m
+    )
+    for outline in (found.footprint, found.straight):
+        assert outline.is_valid
+        # the customer's rule: nothing that is unreachable by more than one cell is shown
+        assert not shapely.contains_xy(outline, lon, lat).any()
+    assert found.straight.difference(found.footprint).area <= 1e-3 * found.straight.area
