@@ -199,3 +199,30 @@ def test_reaction_is_flown_straight_on(tmp_path: Path) -> None:
     assert behind[0] - behind[1] == pytest.approx(2.0 * flown_m, abs=2.0 * prompt.cell_m)
     ahead = [reach_m(f.footprint, place, 0.5 * math.pi) for f in (prompt, late)]
     assert ahead[1] == pytest.approx(ahead[0], abs=prompt.cell_m)
+
+
+@pytest.mark.parametrize(
+    ("speed_mps", "credit", "share"),
+    [(28.0, 0.0, 1.0), (50.0, 0.0, 0.0), (50.0, 0.5, 0.5), (28.0, 0.5, 1.0)],
+)
+def test_speed_at_failure_is_charged_in_full_and_credited_only_when_asked(
+    tmp_path: Path, speed_mps: float, credit: float, share: float
+) -> None:
+    place, alt_m = PLACES["40 south"], 600.0
+    usual = footprint_over(tmp_path, place, alt_m)
+    found = footprint_over(
+        tmp_path,
+        place,
+        alt_m,
+        speed_eas_mps=speed_mps,
+        margins=cases.neutral(excess_speed_credit=credit),
+    )
+    lon, lat = (float(v[0]) for v in place.plane().to_lonlat(np.array([0.0]), np.array([3000.0])))
+    before, after = usual.explain(lon, lat).alt_m, found.explain(lon, lat).alt_m
+    assert before is not None
+    assert after is not None
+    # Derived: kinetic height (V^2 - Vg^2) / 2g at the TAS of the height of failure; a deficit in
+    # full, an excess not at all or by the share asked for
+    sigma = (1.0 - 0.0065 * alt_m / 288.15) ** 4.255880
+    kinetic_m = (speed_mps**2 - EAS_MPS**2) / sigma / (2.0 * forms.G)
+    assert after - before == pytest.approx(share * kinetic_m, abs=0.02 * abs(kinetic_m) + 0.01)
