@@ -18,6 +18,7 @@ from tests.source_surface import LocalPlane, SourceSurface
 Array = NDArray[np.float64]
 FT_M = 0.3048
 ALLOWED_M = 15.0 * FT_M  # an arrival may be this much below the claim (the customer's figure)
+SHORT_LEG_M = 60.0  # two cells, about 2 s of flight
 WORST_M = 50.0 * FT_M  # and none more than this
 
 
@@ -64,6 +65,7 @@ class Score:
             f" {sum(r.early_s > 0.5 for r in self.results)} turn too early"
         ]
         worst = sorted(self.results, key=lambda r: min(r.arrival_m, r.clearance_m))[:8]
+        worst += [result for result in self.results if result.miss_m > 60.0][:8]
         lines += [
             f"  {r.label}: {r.lon_deg:.5f} {r.lat_deg:.5f} bends {r.bends} arrival"
             f" {r.arrival_m / FT_M:.1f} ft, clearance {r.clearance_m / FT_M:.1f} ft at"
@@ -89,6 +91,22 @@ def legs_and_turns(path: GlidePath, plane: LocalPlane) -> tuple[Array, Array]:
             turns.append((bank, turn))
             begun = i + 1
     legs.append((x[begun], y[begun], x[-1], y[-1]))
+    return _joined(legs, turns)
+
+
+def _joined(
+    legs: list[tuple[float, float, float, float]], turns: list[tuple[float, float]]
+) -> tuple[Array, Array]:
+    """Join turns to the same side with hardly a leg between: no pilot levels the wings for it."""
+    k = 1
+    while k < len(turns):
+        length_m = math.hypot(legs[k][2] - legs[k][0], legs[k][3] - legs[k][1])
+        (bank, first), (_bank, second) = turns[k - 1], turns[k]
+        if length_m < SHORT_LEG_M and first * second > 0.0 and abs(first + second) < 2 * math.pi:
+            turns[k - 1 : k + 1] = [(bank, first + second)]
+            del legs[k]
+        else:
+            k += 1
     return np.array(legs), np.array(turns).reshape(-1, 2)
 
 

@@ -123,28 +123,41 @@ def case_of(draw: Draw, ground: Ground, surface: SourceSurface) -> GlideCase:
     )
 
 
+@dataclass
+class Scores:
+    """Flights in the winds as given, and in winds worse by the margin on every straight track."""
+
+    nominal: Score
+    worse: Score
+
+
 def fly_case(
-    label: str, found: Footprint, surface: SourceSurface, count: int, seed: int, score: Score
+    label: str, found: Footprint, surface: SourceSurface, count: int, seed: int, scores: Scores
 ) -> None:
     cells, near = cells_to_fly(found, count, np.random.default_rng(seed))
-    score.near += near
-    for k, cell in enumerate(cells):
-        # every other flight in a wind worse by the margin: the claim must hold there too
-        against = found.case.margins.wind_error_mps if k % 2 else 0.0
-        score.results.append(judged(label, found, cell, surface, against))
+    scores.nominal.near += near
+    scores.nominal.results += [judged(label, found, cell, surface) for cell in cells]
+    margin_mps = found.case.margins.wind_error_mps
+    if margin_mps > 0.0:
+        scores.worse.results += [judged(label, found, cell, surface, margin_mps) for cell in cells]
 
 
 @pytest.fixture(scope="module")
-def score(grounds: dict[str, Ground]) -> Score:
-    total = Score()
+def scores(grounds: dict[str, Ground]) -> Scores:
+    total = Scores(Score(), Score())
     count = math.ceil(1.08 * FLIGHTS / (len(DRAWS) * len(grounds)))  # some have few bent cells
     for name, ground in grounds.items():
         surface, store = SourceSurface(ground.file), TerrainStore(ground.folder)
         for k, draw in enumerate(DRAWS):
             found = solve(store, case_of(draw, ground, surface), limits=SolveLimits())
             fly_case(f"{name} {k}", found, surface, count, 100 + k, total)
-    print("\n" + total.report())
+    print("\n" + total.nominal.report() + "\nworse wind: " + total.worse.report())
     return total
+
+
+@pytest.fixture(scope="module")
+def score(scores: Scores) -> Score:
+    return scores.nominal
 
 
 def test_enough_was_flown(score: Score) -> None:
@@ -162,6 +175,16 @@ def test_at_most_one_in_a_thousand_is_false(score: Score) -> None:
 def test_none_is_worse_than_fifty_feet(score: Score) -> None:
     worst_m = min(min(r.arrival_m, r.clearance_m) for r in score.results)
     assert worst_m >= -WORST_M, score.report()
+
+
+def test_claims_hold_in_a_wind_worse_by_the_margin(scores: Scores) -> None:
+    # Common practice: a margin that is taken off must be there to be used; the turns are flown in
+    # the wind as given, so one flight in a hundred may be 15 ft low, none 50 ft
+    false = sum(result.is_false for result in scores.worse.results)
+    assert len(scores.worse.results) > FLIGHTS / 10
+    assert false <= len(scores.worse.results) / 100, scores.worse.report()
+    worst_m = min(min(r.arrival_m, r.clearance_m) for r in scores.worse.results)
+    assert worst_m >= -WORST_M, scores.worse.report()
 
 
 def test_flights_pass_over_their_places(score: Score) -> None:
