@@ -103,7 +103,7 @@ def room_to_lose(answer: Footprint, row: int, col: int) -> bool:
     ray_id = int(labels.ray[row, col])
     anchor = rays.find_anchor(labels.anchors, len(labels.anchors), ray_id)
     number = ray_id - int(labels.anchors[anchor, k.OFFSET])
-    state = rays.replay(glide.air, labels.par, labels.run.shape[1], labels.anchors, anchor, number)
+    state = rays.replay(glide.air, labels.par, glide.entry, labels.anchors, anchor, number)
     t = rays.nearest_on_ray(state, row, col)
     circle = np.zeros(k.N_ANCHOR)
     circle[k.AX] = state[k.SX] + t * state[k.DX]

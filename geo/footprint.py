@@ -269,11 +269,14 @@ def label(
     n_roots = _roots(glide, grid, top, run, par, anchors)
     touched = np.empty(0, dtype=np.int32)
     for root in range(n_roots):
-        front.fan(top, alt, ray, run, glide.air, par, anchors, root, touched, True, cancel)
+        front.fan(
+            top, alt, ray, run, glide.entry, glide.air, par, anchors, root, touched, True, cancel
+        )
     _check(cancel)
     straight = alt >= top + np.float32(need_m)
     n_anchors = front.spread(
-        top, alt, ray, run, glide.air, par, anchors, n_roots, cancel, ANCHOR_SPACING_CELLS
+        top, alt, ray, run, glide.entry, glide.air, par, anchors, n_roots, cancel,
+        ANCHOR_SPACING_CELLS,
     ) if n_roots and bend else n_roots  # fmt: skip
     _check(cancel)
     reach = alt >= top + np.float32(need_m)
@@ -285,6 +288,7 @@ def _parameters(glide: Glide, grid: Grid, floor_m: float) -> Array:
     par[k.CELL_M], par[k.CLEARANCE_M], par[k.FLOOR_M] = grid.cell_m, margins.clearance_m, floor_m
     par[k.LEVEL0_M], par[k.LEVEL_STEP_M] = glide.table.alt_m[0], LEVEL_STEP_M
     par[k.BANK_SIN], par[k.BANK_COS] = sin(margins.bank_rad), cos(margins.bank_rad)
+    par[k.WIND_ERROR_MPS] = margins.wind_error_mps
     par[k.RATIO], par[k.DOWNDRAFT_MPS] = glide.table.ratio, margins.downdraft_mps
     par[k.MAX_RUN] = glide.run.max() / grid.cell_m
     loss = min(float(glide.table.loss.max()), 4.0 / glide.table.ratio)
@@ -321,8 +325,9 @@ def _roots(
         return 0
     root[k.COUNT], root[k.STEP] = 1, 0.0
     end = np.empty(3)
-    if not rays.fly_on(top, run, glide.air, par, root, glide.figures.reaction_s, end):
+    if not rays.fly_on(top, run, glide.entry, glide.air, par, root, glide.figures.reaction_s, end):
         return 1
+    par[k.REACTION_CELLS] = np.hypot(end[0] - x, end[1] - y)
     for j, side in ((1, 1.0), (2, -1.0)):
         turn = anchors[j]
         turn[:] = root
@@ -402,10 +407,8 @@ def ring_ranges(glide: Glide, grid: Grid, top: NDArray[np.float32]) -> list[tupl
     blocks = ring.block_maxima(top)
     longest = np.zeros(N_RANGES)
     for root in range(n_roots):
-        count = int(min(anchors[root, k.COUNT], pi / max(anchors[root, k.STEP], 1e-9)))
-        if glide.track_rad is None:
-            count = int(anchors[root, k.COUNT])
-        states = rays.starts(glide.air, par, run.shape[1], anchors, root, max(count, 1))
+        count = int(anchors[root, k.COUNT])
+        states = rays.starts(glide.air, par, glide.entry, anchors, root, count)
         out = np.empty((len(states), 2))
         ring.ring(top, blocks, run, par, states, need_m, par[k.CLEARANCE_M], out)
         states, out = states[out[:, 1] > 0.0], out[out[:, 1] > 0.0]

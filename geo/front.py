@@ -40,6 +40,7 @@ from geo.layout import (
     NO_LIMIT,
     OFFSET,
     PARENT,
+    REACTION_CELLS,
     ROOM_M,
     SIDE,
     STEP,
@@ -66,17 +67,18 @@ from geo.rays import (
 
 @njit(cache=True, nogil=True)
 def fan(
-    top: Any_, alt: Any_, ray: Any_, run: Any_, air: Any_, par: Any_, anchors: Any_, a: int,
-    touched: Any_, thorough: bool, cancel: Any_,
+    top: Any_, alt: Any_, ray: Any_, run: Any_, entry: Any_, air: Any_, par: Any_, anchors: Any_,
+    a: int, touched: Any_, thorough: bool, cancel: Any_,
 ) -> int:  # fmt: skip
     """Cast every ray of anchor `a` and return how many labels were raised.
 
     The arc is flown step by step and kept clear; where it meets the clearance the fan ends.
-    `cancel` ends it early. `thorough` casts all rays to their end; otherwise one ray of each block is tried first.
+    `cancel` ends it early. `thorough` casts all rays to their end; otherwise one ray of each
+    block is tried first.
     """
     anchor = anchors[a]
     n, offset = int(anchor[COUNT]), int(anchor[OFFSET])
-    arc, n_tracks = new_arc(air, par, anchor), run.shape[1]
+    arc = new_arc(air, par, anchor)
     arcs, state = np.empty((BLOCK_RAYS, N_ARC)), np.empty(N_STATE)
     half = int(np.pi / anchor[STEP]) if anchor[TURNS] > 0.0 else n
     n_touched, k, open_arc = 0, 0, True
@@ -92,7 +94,7 @@ def fan(
         eager = thorough and k <= half
         allowance = NO_LIMIT if eager else int(par[DETOUR_CELLS])
         first, every = m // 2, 1
-        if m and ray_start(arcs[first], n_tracks, state):
+        if m and ray_start(arcs[first], entry, state):
             before = n_touched
             n_touched = cast(
                 top, alt, ray, run, par, state, offset + k + first, offset, allowance,
@@ -105,7 +107,7 @@ def fan(
                 )
                 every = min(max(every, 1), m)
         for q in range(0, m, every):
-            if q != first and every < m and ray_start(arcs[q], n_tracks, state):
+            if q != first and every < m and ray_start(arcs[q], entry, state):
                 n_touched = cast(
                     top, alt, ray, run, par, state, offset + k + q, offset, allowance,
                     touched, n_touched,
@@ -135,14 +137,16 @@ def _sides(top: Any_, alt: Any_, par: Any_, r: int, c: int, dx: float, dy: float
 
 @njit(cache=True, nogil=True)
 def _add_anchor(
-    run: Any_, air: Any_, par: Any_, anchors: Any_, n_anchors: int, ray_id: int, cell: int,
-    cols: int, mask_state: Any_,
+    run: Any_, entry: Any_, air: Any_, par: Any_, anchors: Any_, n_anchors: int, ray_id: int,
+    cell: int, cols: int, mask_state: Any_,
 ) -> bool:  # fmt: skip
     """Write anchor number `n_anchors` where ray `ray_id` passes `cell`; side still open."""
     a = find_anchor(anchors, n_anchors, ray_id)
-    state = replay(air, par, run.shape[1], anchors, a, ray_id - int(anchors[a, OFFSET]))
+    state = replay(air, par, entry, anchors, a, ray_id - int(anchors[a, OFFSET]))
     r, c = cell // cols, cell % cols
     t = nearest_on_ray(state, r, c)
+    if ray_id == 0 and t < par[REACTION_CELLS]:
+        return False  # nothing is done before the reaction time is over
     z = min(glide_alt(run, par, state[SZ], state[TRACK], t), state[CAP])
     new = anchors[n_anchors]
     new[AX], new[AY], new[AZ] = state[SX] + t * state[DX], state[SY] + t * state[DY], z
@@ -157,7 +161,7 @@ def _add_anchor(
 
 @njit(cache=True, nogil=True)
 def spread(
-    top: Any_, alt: Any_, ray: Any_, run: Any_, air: Any_, par: Any_, anchors: Any_,
+    top: Any_, alt: Any_, ray: Any_, run: Any_, entry: Any_, air: Any_, par: Any_, anchors: Any_,
     n_anchors: int, cancel: Any_, spacing: int,
 ) -> int:  # fmt: skip
     """Bend paths round terrain: fans from the edge of what is reached, highest edge cell first.
@@ -195,7 +199,7 @@ def spread(
             return n_anchors
         if cancel[0]:
             return -1
-        if not _add_anchor(run, air, par, anchors, n_anchors, ray[r, c], cell, cols, track):
+        if not _add_anchor(run, entry, air, par, anchors, n_anchors, ray[r, c], cell, cols, track):
             continue
         mask = _sides(top, alt, par, r, c, track[0], track[1]) & ~seen
         marks[r // spacing, c // spacing] |= mask
@@ -208,7 +212,7 @@ def spread(
                 anchor[OFFSET] += anchor[COUNT]
             anchor[SIDE] = 1.0 if bit == 1 else -1.0
             n_touched = fan(
-                top, alt, ray, run, air, par, anchors, n_anchors, touched, False, cancel
+                top, alt, ray, run, entry, air, par, anchors, n_anchors, touched, False, cancel
             )
             anchor[FOUND] = n_touched
             n_anchors += 1

@@ -42,6 +42,7 @@ class Glide:
     case: GlideCase
     table: GlideTable
     run: Array
+    entry: Array
     air: Array
     start_alt_m: float
     track_rad: float | None
@@ -96,7 +97,8 @@ def prepare(case: GlideCase, frame: Frame, ground_m: float) -> Glide:
     with np.errstate(divide="ignore"):
         per_m = np.where(np.isfinite(table.loss), 1.0 / table.loss, 0.0)
     held = (per_m[:-1] > 0) & (per_m[1:] > 0)
-    run = np.where(held, 0.5 * (per_m[:-1] + per_m[1:]), 0.0)
+    entry, share = _speeding_up(table, case.polar.best_glide_eas_mps)
+    run = np.where(held, 0.5 * (per_m[:-1] + per_m[1:]) * share, 0.0)
     air = np.column_stack(
         (table.tas_mps, table.tas_mps * np.cos(table.gamma_rad), table.wind_east_mps,
          table.wind_north_mps)
@@ -107,9 +109,24 @@ def prepare(case: GlideCase, frame: Frame, ground_m: float) -> Glide:
     track = None if case.track_rad is None else (case.track_rad + turn) % (2 * pi)
     notes = _glide_notes(case, table)
     return Glide(
-        case, table, np.ascontiguousarray(run), np.ascontiguousarray(air), start_alt_m, track, turn,
-        _figures(case, table, track, reaction_s), tuple(notes),
+        case, table, np.ascontiguousarray(run), entry, np.ascontiguousarray(air), start_alt_m,
+        track, turn, _figures(case, table, track, reaction_s), tuple(notes),
     )  # fmt: skip
+
+
+def _speeding_up(table: GlideTable, glide_eas_mps: float) -> tuple[Array, Array]:
+    """Return what it costs to fly tracks at speeds of their own, as the wind policy does.
+
+    The height [m] to speed up from best glide to each track's fastest speed, shape
+    ``(n_tracks,)``, and the share of each level interval's height that is left for distance where
+    a track's speed grows on the way down, shape ``(n - 1, n_tracks)``. Slowing down earns nothing.
+    """
+    tas = table.speed_eas_mps * (table.tas_mps / glide_eas_mps)[:, None]
+    kinetic_m = np.where(np.isfinite(tas), tas**2, 0.0) / (2.0 * k.GRAVITY_MPS2)
+    glide_m = (table.tas_mps**2 / (2.0 * k.GRAVITY_MPS2))[:, None]
+    gained = np.maximum(kinetic_m[:-1] - kinetic_m[1:], 0.0)
+    height = np.diff(table.alt_m)[:, None]
+    return (kinetic_m - glide_m).max(axis=0, initial=0.0), np.maximum(1.0 - gained / height, 0.0)
 
 
 def _speed_change_m(case: GlideCase) -> float:

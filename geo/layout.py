@@ -14,7 +14,7 @@ FAR = 1e30
 # par[]: scalars of one solve
 CELL_M, LEVEL0_M, LEVEL_STEP_M, CLEARANCE_M, FLOOR_M = 0, 1, 2, 3, 4
 BANK_SIN, BANK_COS, RATIO, DOWNDRAFT_MPS, MAX_RUN = 5, 6, 7, 8, 9
-JUMP_M, ROOM_M, DETOUR_CELLS, N_PAR = 10, 11, 12, 13
+JUMP_M, ROOM_M, DETOUR_CELLS, REACTION_CELLS, WIND_ERROR_MPS, N_PAR = 10, 11, 12, 13, 14, 15
 
 # air[level, ...]: glide TAS, its horizontal part, wind towards x and y, all in m/s
 TAS, AIR_SPEED, WIND_X, WIND_Y = 0, 1, 2, 3

@@ -56,8 +56,8 @@ def _leg(
     """Return the leg of a ray up to the cell (row, col), or up to the anchor at `at`."""
     anchor = rays.find_anchor(labels.anchors, len(labels.anchors), ray_id)
     number = ray_id - int(labels.anchors[anchor, k.OFFSET])
-    n_tracks = labels.run.shape[1]
-    state = rays.replay(glide.air, labels.par, n_tracks, labels.anchors, anchor, number)
+
+    state = rays.replay(glide.air, labels.par, glide.entry, labels.anchors, anchor, number)
     if at is None:
         cells = rays.nearest_on_ray(state, row, col)
     else:
@@ -91,7 +91,7 @@ def straight_path(
 def _nearest_root_leg(glide: Glide, labels: Labels, anchor: int, x: float, y: float) -> Leg | None:
     """Return the ray of a first turn that passes nearest to a place [cells], within one cell."""
     count = int(labels.anchors[anchor, k.COUNT])
-    states = rays.starts(glide.air, labels.par, labels.run.shape[1], labels.anchors, anchor, count)
+    states = rays.starts(glide.air, labels.par, glide.entry, labels.anchors, anchor, count)
     ahead_x, ahead_y = x - states[:, k.SX], y - states[:, k.SY]
     along = ahead_x * states[:, k.DX] + ahead_y * states[:, k.DY]
     across = np.abs(ahead_x * states[:, k.DY] - ahead_y * states[:, k.DX])
@@ -137,7 +137,7 @@ def _assemble(
 def _arc_line(glide: Glide, labels: Labels, leg: Leg) -> list[tuple[float, float, float]]:
     """Return points along the arc of a leg, its start included."""
     states = rays.starts(
-        glide.air, labels.par, labels.run.shape[1], labels.anchors, leg.anchor, leg.ray + 1
+        glide.air, labels.par, glide.entry, labels.anchors, leg.anchor, leg.ray + 1
     )
     every = max(floor(ARC_POINT_RAD / labels.anchors[leg.anchor, k.STEP]), 1)
     return [(s[k.SX], s[k.SY], s[k.CAP]) for s in states[::every]]

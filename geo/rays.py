@@ -54,6 +54,7 @@ from geo.layout import (
     TAS,
     TRACK,
     TURNS,
+    WIND_ERROR_MPS,
     WIND_X,
     WIND_Y,
     WX,
@@ -191,8 +192,9 @@ def _begin_arc(air: Any_, par: Any_, anchor: Any_, z: float, arc: Any_) -> None:
     arc[ADVANCE] = turning * radius_m * step / par[CELL_M]
     arc[SECONDS] = turning * seconds / par[CELL_M]
     arc[LOSS] = turning * (
-        radius_m * step / (par[RATIO] * par[BANK_COS]) + par[DOWNDRAFT_MPS] * seconds
-    )
+        radius_m * step / (par[RATIO] * par[BANK_COS])
+        + (par[DOWNDRAFT_MPS] + par[WIND_ERROR_MPS] / par[RATIO]) * seconds
+    )  # the way that the wind error carries off while turning must be flown back
     arc[WX], arc[WY], arc[Z_FROM], arc[SPEED] = here[WIND_X], here[WIND_Y], z, here[AIR_SPEED]
     arc[WX_PER_M] = (here[WIND_X] - below[WIND_X]) / par[LEVEL_STEP_M]
     arc[WY_PER_M] = (here[WIND_Y] - below[WIND_Y]) / par[LEVEL_STEP_M]
@@ -228,8 +230,11 @@ def arc_step(air: Any_, par: Any_, anchor: Any_, arc: Any_) -> None:
 
 
 @njit(cache=True, nogil=True)
-def ray_start(arc: Any_, n_tracks: int, state: Any_) -> bool:
-    """Write the ray that leaves the arc here, wings level; False where no track is held."""
+def ray_start(arc: Any_, entry: Any_, state: Any_) -> bool:
+    """Write the ray that leaves the arc here, wings level; False where no track is held.
+
+    `entry` holds for each track the height [m] that it takes to speed up for the straight glide.
+    """
     drop = arc[2] - arc[Z_FROM]
     gx = arc[SPEED] * arc[3] + arc[WX] + drop * arc[WX_PER_M]
     gy = arc[SPEED] * arc[4] + arc[WY] + drop * arc[WY_PER_M]
@@ -238,9 +243,13 @@ def ray_start(arc: Any_, n_tracks: int, state: Any_) -> bool:
     if speed < 1e-6 or gx * arc[3] + gy * arc[4] <= 0.0:
         return False
     state[DX], state[DY] = gx / speed, gy / speed
-    state[SX], state[SY], state[SZ], state[CAP] = arc[0], arc[1], arc[2], arc[2] - arc[DIVE]
     turns = atan2(gx, gy) / (2.0 * np.pi)
-    state[TRACK] = (turns - floor(turns)) * n_tracks
+    n_tracks = entry.shape[0]
+    track = (turns - floor(turns)) * n_tracks
+    i = int(track) % n_tracks
+    speed_up = max(entry[i], entry[(i + 1) % n_tracks])
+    state[SX], state[SY], state[TRACK] = arc[0], arc[1], track
+    state[SZ], state[CAP] = arc[2] - speed_up, arc[2] - arc[DIVE]
     return True
 
 
@@ -254,7 +263,7 @@ def clear(top: Any_, par: Any_, x: float, y: float, z: float) -> bool:
 
 
 @njit(cache=True, nogil=True)
-def starts(air: Any_, par: Any_, n_tracks: int, anchors: Any_, a: int, count: int) -> Any_:
+def starts(air: Any_, par: Any_, entry: Any_, anchors: Any_, a: int, count: int) -> Any_:
     """Return the starts of the first `count` rays of an anchor, shape ``(count, N_STATE)``.
 
     Digit for digit as the fan cast them; NaN where no track is held.
@@ -262,18 +271,18 @@ def starts(air: Any_, par: Any_, n_tracks: int, anchors: Any_, a: int, count: in
     arc = new_arc(air, par, anchors[a])
     out = np.full((count, N_STATE), np.nan)
     for k in range(count):
-        ray_start(arc, n_tracks, out[k])
+        ray_start(arc, entry, out[k])
         arc_step(air, par, anchors[a], arc)
     return out
 
 
 @njit(cache=True, nogil=True)
-def replay(air: Any_, par: Any_, n_tracks: int, anchors: Any_, a: int, k: int) -> Any_:
+def replay(air: Any_, par: Any_, entry: Any_, anchors: Any_, a: int, k: int) -> Any_:
     """Return the start of ray `k` of anchor `a` again, digit for digit as the fan cast it."""
     arc, state = new_arc(air, par, anchors[a]), np.full(N_STATE, np.nan)
     for _ in range(k):
         arc_step(air, par, anchors[a], arc)
-    ray_start(arc, n_tracks, state)
+    ray_start(arc, entry, state)
     return state
 
 
@@ -327,14 +336,14 @@ def is_clear(top: Any_, par: Any_, anchor: Any_) -> bool:
 
 @njit(cache=True, nogil=True)
 def fly_on(
-    top: Any_, run: Any_, air: Any_, par: Any_, anchor: Any_, seconds: float, end: Any_
+    top: Any_, run: Any_, entry: Any_, air: Any_, par: Any_, anchor: Any_, seconds: float, end: Any_
 ) -> bool:
     """Fly straight on from an anchor for some seconds and write x, y, z of the end to `end` (3,).
 
     False where the track cannot be held or the clearance is not kept on the way.
     """
     state, arc = np.empty(N_STATE), new_arc(air, par, anchor)
-    if not ray_start(arc, run.shape[1], state):
+    if not ray_start(arc, entry, state):
         return False
     gx, gy = arc[SPEED] * arc[3] + arc[WX], arc[SPEED] * arc[4] + arc[WY]
     distance = sqrt(gx * gx + gy * gy) * seconds / par[CELL_M]
