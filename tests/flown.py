@@ -140,7 +140,10 @@ def flown(case: GlideCase, path: GlidePath, plane: LocalPlane, against_mps: floa
     track = case.track_rad
     if track is None:
         track = math.atan2(legs[0, 2] - legs[0, 0], legs[0, 3] - legs[0, 1])
-    return fly(legs, turns, case.alt_m, track, aeroplane_of(case), air_of(case, against_mps))
+    # from any heading the failure finds the aeroplane on its leg, at the speed of the policy
+    any_heading = case.track_rad is None
+    aeroplane, air = aeroplane_of(case), air_of(case, against_mps)
+    return fly(legs, turns, case.alt_m, track, aeroplane, air, any_heading)
 
 
 def judged(

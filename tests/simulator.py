@@ -350,20 +350,26 @@ def wind_levels(air: Air) -> Array:
     return np.ascontiguousarray(np.column_stack([air.alt_m, air.east_mps, air.north_mps]))
 
 
-def _closest(out: Array, x_m: float, y_m: float) -> tuple[float, float]:
-    """Return altitude and distance at the closest approach to a point, between samples too."""
+def _closest(out: Array, x_m: float, y_m: float) -> tuple[float, float, int]:
+    """Return altitude, distance and last sample at the closest approach, between samples too."""
     if len(out) == 1:
-        return float(out[0, 3]), math.hypot(out[0, 1] - x_m, out[0, 2] - y_m)
+        return float(out[0, 3]), math.hypot(out[0, 1] - x_m, out[0, 2] - y_m), 0
     start, step = out[:-1], np.diff(out, axis=0)
     along = (x_m - start[:, 1]) * step[:, 1] + (y_m - start[:, 2]) * step[:, 2]
     share = np.clip(along / np.maximum(step[:, 1] ** 2 + step[:, 2] ** 2, 1e-9), 0.0, 1.0)
     away = np.hypot(start[:, 1] + share * step[:, 1] - x_m, start[:, 2] + share * step[:, 2] - y_m)
     i = int(np.argmin(away))
-    return float(start[i, 3] + share[i] * step[i, 3]), float(away[i])
+    return float(start[i, 3] + share[i] * step[i, 3]), float(away[i]), i
 
 
 def fly(
-    legs: Array, turns: Array, alt_m: float, track_rad: float, aeroplane: Aeroplane, air: Air
+    legs: Array,
+    turns: Array,
+    alt_m: float,
+    track_rad: float,
+    aeroplane: Aeroplane,
+    air: Air,
+    at_leg_speed: bool = False,
 ) -> Flight:
     """Fly straight legs joined by turns and say how it ended.
 
@@ -377,16 +383,22 @@ def fly(
         Altitude [m] and ground track [rad] at the start.
     aeroplane, air
         Plain numbers of the glide and of the air.
+    at_leg_speed
+        Whether the flight begins at the speed of its first leg, not at the best-glide speed.
     """
     par, wind = parameters(aeroplane, air), wind_levels(air)
     legs = np.ascontiguousarray(legs, dtype=np.float64)
     turns = np.ascontiguousarray(np.reshape(turns, (-1, 2)), dtype=np.float64)
-    tas = aeroplane.glide_eas_mps / math.sqrt(_sigma(alt_m, par))
+    eas = aeroplane.glide_eas_mps
+    if at_leg_speed and aeroplane.by_wind:
+        eas = _speed_for_track(track_rad, float(alt_m), par, wind)
+    tas = eas / math.sqrt(_sigma(alt_m, par))
     descent = math.atan(1.0 / aeroplane.ratio)
     state = (float(legs[0, 0]), float(legs[0, 1]), float(alt_m), tas, descent, 0.0)
     heading = _heading_for(track_rad, state, par, wind)
     out = np.empty((40_000, 5))
     used, mark = fly_legs(legs, turns, (*state[:5], heading), par, wind, out)
     out = out[:used].copy()
-    arrival, miss = _closest(out[mark:], float(legs[-1, 2]), float(legs[-1, 3]))
+    arrival, miss, last = _closest(out[mark:], float(legs[-1, 2]), float(legs[-1, 3]))
+    out = out[: mark + last + 1]  # what comes after the place is not part of the claim
     return Flight(out[:, 0], out[:, 1], out[:, 2], out[:, 3], out[:, 4], arrival, miss)

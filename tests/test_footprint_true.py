@@ -79,6 +79,7 @@ DRAWS = [
     Draw(0.45, 0.50, 1200.0, 100.0, TRAINER, WESTERLY, SINKING),
     Draw(0.52, 0.52, 1000.0, 0.0, TRAINER, WESTERLY, BARE, "wind"),
     Draw(0.42, 0.58, 500.0, 160.0, TRAINER, CALM, BARE),
+    Draw(0.48, 0.50, 900.0, None, HEAVY_SINGLE, BACKING, BARE, "wind"),
 ]
 
 
