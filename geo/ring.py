@@ -95,7 +95,9 @@ def _clear_until(
     while True:
         x, y = state[SX] + (t + NUDGE) * state[DX], state[SY] + (t + NUDGE) * state[DY]
         if not (0.0 <= x < cols and 0.0 <= y < rows):
-            return t
+            # the last block may stick out of the map
+            past_x, past_y = (x - cols) / max(state[DX], 1e-12), (y - rows) / max(state[DY], 1e-12)
+            return t - max(past_x, past_y, 0.0)
         t_next, z_in = t + NUDGE + _leaves(x, y, state, BLOCK), z_out
         while t_next > level_end and per_m > 0.0:
             z_at, t_at, level = z_at - (level_end - t_at) / per_m, level_end, level - 1
