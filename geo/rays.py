@@ -135,8 +135,9 @@ def cast(
     step_c, step_r = (1 if dx > 0 else -1), (1 if dy > 0 else -1)
     gap_x = 1.0 / abs(dx) if abs(dx) > 1e-12 else FAR
     gap_y = 1.0 / abs(dy) if abs(dy) > 1e-12 else FAR
-    next_x = ((c + 1 - x) if dx > 0 else (x - c)) * gap_x
-    next_y = ((r + 1 - y) if dy > 0 else (y - r)) * gap_y
+    # along a grid line the other line is never met
+    next_x = FAR if gap_x == FAR else ((c + 1 - x) if dx > 0 else (x - c)) * gap_x
+    next_y = FAR if gap_y == FAR else ((r + 1 - y) if dy > 0 else (y - r)) * gap_y
     clearance, floor_m = par[CLEARANCE_M], par[FLOOR_M]
     left, prune = allowance, allowance < NO_LIMIT
     state[FLOWN] = 0.0

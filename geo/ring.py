@@ -12,7 +12,7 @@ from typing import Any as Any_
 import numpy as np
 from numba import njit
 
-from geo.layout import CAP, DX, DY, LEVEL0_M, LEVEL_STEP_M, SX, SY, SZ, TRACK
+from geo.layout import CAP, DX, DY, FAR, LEVEL0_M, LEVEL_STEP_M, SX, SY, SZ, TRACK
 from geo.rays import glide_alt, run_at
 
 BLOCK = 20  # cells along the edge of a block
@@ -121,12 +121,15 @@ def _walk(
     Writes where the clearance ends and where the ray last arrives high.
     """
     pair[0], pair[1] = t, 0.0
-    gap_x = 1.0 / max(abs(state[DX]), 1e-12)
-    gap_y = 1.0 / max(abs(state[DY]), 1e-12)
+    gap_x = 1.0 / abs(state[DX]) if abs(state[DX]) > 1e-12 else FAR
+    gap_y = 1.0 / abs(state[DY]) if abs(state[DY]) > 1e-12 else FAR
     x, y = state[SX] + (t + NUDGE) * state[DX], state[SY] + (t + NUDGE) * state[DY]
     c, r = int(floor(x)), int(floor(y))
-    next_x = t + NUDGE + ((c + 1 - x) if state[DX] > 0 else (x - c)) * gap_x
-    next_y = t + NUDGE + ((r + 1 - y) if state[DY] > 0 else (y - r)) * gap_y
+    next_x, next_y = FAR, FAR
+    if gap_x < FAR:
+        next_x = t + NUDGE + ((c + 1 - x) if state[DX] > 0 else (x - c)) * gap_x
+    if gap_y < FAR:
+        next_y = t + NUDGE + ((r + 1 - y) if state[DY] > 0 else (y - r)) * gap_y
     level = min(int((z - par[LEVEL0_M]) / par[LEVEL_STEP_M]), run.shape[0] - 1)
     per_m = run_at(run, level, state[TRACK]) if level >= 0 else 0.0
     level_end = t + (z - par[LEVEL0_M] - level * par[LEVEL_STEP_M]) * per_m
