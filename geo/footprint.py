@@ -35,9 +35,9 @@ Array = NDArray[np.float64]
 
 FIRST_TURN_MAX_RAD = 210.0 * pi / 180.0  # either way round; farther round is left to the front
 MAX_ANCHORS = 60_000
-ANCHOR_SPACING_CELLS = 4
-JUMP_M = 15.0  # a label lower than its neighbour's by this much, and by the glide over
-JUMP_CELLS = 3.0  # so many cells, is worth a new bend
+ANCHOR_SPACING_CELLS = 3
+JUMP_M = 10.0  # a label lower than its neighbour's by this much, and by the glide over
+JUMP_CELLS = 2.0  # so many cells, is worth a new bend
 ROOM_M = 5.0  # height above the clearance that a bend must have to spare
 DETOUR_CELLS = 12.0  # cells beyond the turn that a ray may fly before it must find new ground
 N_RANGES = 36
@@ -323,7 +323,7 @@ def _roots(
     dx, dy = sin(glide.track_rad), cos(glide.track_rad)
     if not rays.heading_for(glide.air, par, z, dx, dy, root[k.HX : k.HY + 1]):
         return 0
-    root[k.COUNT], root[k.STEP] = 1, 0.0
+    root[k.COUNT], root[k.STEP], root[k.SPEEDS_UP] = 1, 0.0, 1.0
     end = np.empty(3)
     if not rays.fly_on(top, run, glide.entry, glide.air, par, root, glide.figures.reaction_s, end):
         return 1

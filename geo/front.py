@@ -28,7 +28,6 @@ from geo.layout import (
     DY,
     FLOOR_M,
     FLOWN,
-    FOUND,
     HX,
     HY,
     JUMP_M,
@@ -43,6 +42,7 @@ from geo.layout import (
     REACTION_CELLS,
     ROOM_M,
     SIDE,
+    SPEEDS_UP,
     STEP,
     SX,
     SY,
@@ -150,7 +150,7 @@ def _add_anchor(
     z = min(glide_alt(run, par, state[SZ], state[TRACK], t), state[CAP])
     new = anchors[n_anchors]
     new[AX], new[AY], new[AZ] = state[SX] + t * state[DX], state[SY] + t * state[DY], z
-    new[PARENT], new[TURNS] = ray_id, 1.0
+    new[PARENT], new[TURNS], new[SPEEDS_UP] = ray_id, 1.0, 1.0
     reach = max((z - par[FLOOR_M]) * par[MAX_RUN], 8.0)
     new[STEP] = 1.0 / reach
     new[COUNT] = floor(np.pi * reach)
@@ -214,7 +214,6 @@ def spread(
             n_touched = fan(
                 top, alt, ray, run, entry, air, par, anchors, n_anchors, touched, False, cancel
             )
-            anchor[FOUND] = n_touched
             n_anchors += 1
             for j in range(min(n_touched, touched.shape[0])):
                 tr, tc = touched[j] // cols, touched[j] % cols

@@ -19,8 +19,9 @@ JUMP_M, ROOM_M, DETOUR_CELLS, REACTION_CELLS, WIND_ERROR_MPS, N_PAR = 10, 11, 12
 # air[level, ...]: glide TAS, its horizontal part, wind towards x and y, all in m/s
 TAS, AIR_SPEED, WIND_X, WIND_Y = 0, 1, 2, 3
 
-# anchors[a, ...]; TURNS is 0 where any heading may be taken without a turn
-AX, AY, AZ, HX, HY, SIDE, STEP, COUNT, OFFSET, PARENT, TURNS, FOUND, N_ANCHOR = range(13)
+# anchors[a, ...]; TURNS is 0 where any heading may be taken without a turn, SPEEDS_UP is 0 where
+# the speed of the straight glide is flown already
+AX, AY, AZ, HX, HY, SIDE, STEP, COUNT, OFFSET, PARENT, TURNS, SPEEDS_UP, N_ANCHOR = range(13)
 
 # state[...]: a ray's start: place, formula altitude, altitude cap, unit track, track index; then
 # how many cells it was flown before it ended
@@ -28,7 +29,7 @@ SX, SY, SZ, CAP, DX, DY, TRACK, FLOWN, N_STATE = range(9)
 
 # arc[...]: x, y, z, heading x, heading y, then the constants of its steps
 ADVANCE, SECONDS, LOSS, WX, WY, Z_FROM, SPEED, WX_PER_M, WY_PER_M = range(5, 14)
-COS_HALF, SIN_HALF, SHEAR_S, DIVE, N_ARC = range(14, 19)
+COS_HALF, SIN_HALF, SHEAR_S, DIVE, SPEED_UP, N_ARC = range(14, 20)
 
 BLOCK_RAYS = 8  # neighbouring rays tried together once one of them finds new ground
 NO_LIMIT = 1 << 30  # as an allowance: never give up

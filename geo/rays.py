@@ -47,6 +47,8 @@ from geo.layout import (
     SIDE,
     SIN_HALF,
     SPEED,
+    SPEED_UP,
+    SPEEDS_UP,
     STEP,
     SX,
     SY,
@@ -158,8 +160,11 @@ def cast(
         z_out = np.float32(min(z_at - (t - t_at) * slope, cap))
         if z_out < top[r, c] + clearance or z_out < floor_m:
             return n_touched
-        if z_out > alt[r, c] + gain:
-            alt[r, c] = z_out
+        # where the centre lies beyond the exit, on the ray's line, the label is the lower one there
+        beyond = max((c + 0.5 - x) * dx + (r + 0.5 - y) * dy, t)
+        z_label = np.float32(min(z_at - (beyond - t_at) * slope, cap))
+        if z_label > alt[r, c] + gain:
+            alt[r, c] = z_label
             ray[r, c] = ray_id
             state[FLOWN] = t
             if n_touched < touched.shape[0]:
@@ -210,6 +215,7 @@ def new_arc(air: Any_, par: Any_, anchor: Any_) -> Any_:
     """Return the state of an arc that begins at an anchor: x, y, z, heading, constants."""
     arc = np.zeros(N_ARC)
     arc[:5] = anchor[:5]
+    arc[SPEED_UP] = anchor[SPEEDS_UP]
     _begin_arc(air, par, anchor, arc[2], arc)
     return arc
 
@@ -248,7 +254,7 @@ def ray_start(arc: Any_, entry: Any_, state: Any_) -> bool:
     n_tracks = entry.shape[0]
     track = (turns - floor(turns)) * n_tracks
     i = int(track) % n_tracks
-    speed_up = max(entry[i], entry[(i + 1) % n_tracks])
+    speed_up = arc[SPEED_UP] * max(entry[i], entry[(i + 1) % n_tracks])
     state[SX], state[SY], state[TRACK] = arc[0], arc[1], track
     state[SZ], state[CAP] = arc[2] - speed_up, arc[2] - arc[DIVE]
     return True

@@ -62,16 +62,19 @@ def cells_crossed(x: float, y: float, dx: float, dy: float, length: float) -> li
 def cast(
     top: Any, run: Any, level0_m: float, step_m: float, clearance_m: float, start: Any
 ) -> dict[tuple[int, int], float]:
-    """Return the altitude at which a straight glide leaves each cell, until it meets terrain."""
+    """Return the label of each cell under a straight glide, until it meets terrain.
+
+    The altitude at which it leaves the cell, or abreast of the centre where that comes later.
+    """
     x, y, z, dx, dy, track = start
     labels: dict[tuple[int, int], float] = {}
     for row, col, t in cells_crossed(x, y, dx, dy, 2.0 * sum(top.shape)):
         if not (0 <= row < top.shape[0] and 0 <= col < top.shape[1]):
             break
-        alt = glide_alt(run, level0_m, step_m, z, track, t, 0.05)
-        if alt < top[row, col] + clearance_m:
+        if glide_alt(run, level0_m, step_m, z, track, t, 0.05) < top[row, col] + clearance_m:
             break
-        labels[row, col] = alt
+        centre = (col + 0.5 - x) * dx + (row + 0.5 - y) * dy
+        labels[row, col] = glide_alt(run, level0_m, step_m, z, track, max(t, centre), 0.05)
     return labels
 
 
