@@ -87,12 +87,17 @@ class Admission:
             raise Cancelled
         return waiter.result()
 
-    def stop(self) -> None:
-        """Stop all work and take no more."""
+    def halt(self) -> None:
+        """Tell all work to stop and take no more; return at once."""
         with self._lock:
             for flag in self._flags.values():
                 flag[0] = 1
-        self._executor.shutdown(wait=True, cancel_futures=True)
+        self._executor.shutdown(wait=False, cancel_futures=True)
+
+    def stop(self) -> None:
+        """Stop all work, take no more, and wait until it has ended."""
+        self.halt()
+        self._executor.shutdown(wait=True)
 
     def _submit(self, work: Callable[[Flag], T], flag: Flag) -> Future[T]:
         with self._lock:

@@ -72,6 +72,21 @@ def _wind_level(text: str) -> dict[str, float]:
 _wind_level.__name__ = "wind level (altitude_ft,from_deg,speed_kt)"
 
 
+class Place(argparse.Action):
+    """Reads a place: ``--position=LON,LAT`` or ``--position LON LAT``."""
+
+    def __call__(
+        self, parser: argparse.ArgumentParser, namespace: argparse.Namespace, values: Any,
+        option_string: str | None = None,
+    ) -> None:  # fmt: skip
+        """Keep the two numbers."""
+        try:
+            lon, lat = (float(part) for part in ",".join(values).split(","))
+        except ValueError:
+            parser.error(f"argument {option_string}: two numbers are needed, LON,LAT")
+        setattr(namespace, self.dest, [lon, lat])
+
+
 class Parser(argparse.ArgumentParser):
     """A parser that says what is wrong in words on stderr and ends with code 2."""
 
@@ -101,7 +116,7 @@ def _add_footprint(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("--out", type=Path, help="file to write; default standard output")
     parser.add_argument("--case", type=Path, help="file with a request; options come on top of it")
     parser.add_argument(
-        "--position", nargs=2, type=float, metavar=("LON", "LAT"), help="WGS 84 [deg]"
+        "--position", nargs="+", action=Place, metavar="LON,LAT", help="WGS 84 [deg]; or LON LAT"
     )
     parser.add_argument("--aircraft", help="id of a record, or a record's .toml file")
     for name, words in NUMBERS.items():
@@ -128,9 +143,11 @@ def read_case(path: Path) -> dict[str, Any]:
         The file is missing, too large or no JSON object.
     """
     try:
-        if path.stat().st_size > CASE_FILE_MAX_BYTES:
+        with path.open("rb") as file:
+            text = file.read(CASE_FILE_MAX_BYTES + 1)
+        if len(text) > CASE_FILE_MAX_BYTES:
             raise Refused(f"--case: the file is larger than {CASE_FILE_MAX_BYTES} bytes.")
-        case = json.loads(path.read_text(encoding="utf-8"))
+        case = json.loads(text.decode("utf-8"))
     except OSError:
         raise Refused("--case: there is no such file, or it cannot be read.") from None
     except (ValueError, RecursionError):
@@ -236,9 +253,8 @@ def run_serve(options: argparse.Namespace) -> int:
     SettingsError, ModelError
         The service cannot start.
     """
-    import uvicorn
-
     from service.app import create_app
+    from service.server import bind, serve
 
     handler = logging.StreamHandler()
     handler.setFormatter(logging.Formatter("%(message)s"))
@@ -249,17 +265,12 @@ def run_serve(options: argparse.Namespace) -> int:
         static=ROOT / "static",
         work=options.work or default_work(),
     )
-    app = create_app(settings)
-    host = f"[{options.host}]" if ":" in options.host else options.host
-    logger.info("Once ready, the page is at http://%s:%d", host, options.port)
-    uvicorn.run(
-        app,
-        host=options.host,
-        port=options.port,
-        log_level="warning",
-        server_header=False,
-        timeout_graceful_shutdown=3,
-    )
+    check_data(settings)
+    with bind(options.host, options.port) as listener:
+        app = create_app(settings)
+        host = f"[{options.host}]" if ":" in options.host else options.host
+        logger.info("Once ready, the page is at http://%s:%d", host, listener.getsockname()[1])
+        serve(app, listener)
     return EXIT_DONE
 
 

@@ -9,9 +9,8 @@ import sys
 from pathlib import Path
 from typing import Any
 
-import uvicorn
-
 from service.app import create_app
+from service.server import bind, serve
 from tests.service_support import SlowSolver, settings_in, stand_in
 
 slow = SlowSolver(longest_s=60.0)
@@ -23,5 +22,4 @@ def solver(store: Any, case: Any, **given: Any) -> Any:
 
 
 if __name__ == "__main__":
-    app = create_app(settings_in(Path(sys.argv[1])), solver)
-    uvicorn.run(app, host="127.0.0.1", port=int(sys.argv[2]), log_level="warning")
+    serve(create_app(settings_in(Path(sys.argv[1])), solver), bind("127.0.0.1", int(sys.argv[2])))

@@ -7,6 +7,7 @@ import json
 import subprocess
 import sys
 from pathlib import Path
+from socket import socket
 from typing import Any
 
 import pytest
@@ -51,6 +52,18 @@ def test_a_footprint_goes_to_standard_output(data: Path, capsys: Any) -> None:
     assert (code, err) == (EXIT_DONE, "")
     answer = answers.FootprintAnswer.model_validate(json.loads(out))
     assert answer.inputs.track_deg == 90
+
+
+def test_a_position_may_be_one_word_or_two(data: Path, capsys: Any) -> None:
+    words = ["--altitude-ft", "2500", "--aircraft", "test-two"]
+    code, out, _ = run(capsys, f"--position={LON},{LAT}", *words)
+    assert code == EXIT_DONE
+    assert run(capsys, "--position", LON, LAT, *words)[1] == out
+    for faulty in ("1", "1,2,3", "a,b"):
+        with pytest.raises(SystemExit) as ended:
+            main(["footprint", f"--position={faulty}", *words])
+        assert ended.value.code == EXIT_REFUSED
+        assert "--position: two numbers" in capsys.readouterr().err
 
 
 def test_every_field_of_a_request_is_an_option(data: Path, capsys: Any) -> None:
@@ -136,6 +149,11 @@ def test_a_case_file_that_is_no_request(data: Path, tmp_path: Path, capsys: Any,
     assert err
 
 
+def test_a_case_file_is_read_no_farther_than_its_limit(data: Path, capsys: Any) -> None:
+    code, _, err = run(capsys, "--case", "/dev/zero")  # endless, and says that it has no size
+    assert (code, err) == (EXIT_REFUSED, "--case: the file is larger than 256000 bytes.\n")
+
+
 def test_an_output_that_cannot_be_written(data: Path, tmp_path: Path, capsys: Any) -> None:
     code, _, err = run(capsys, *case_words(), "--out", str(tmp_path / "none" / "out.geojson"))
     assert (code, err) == (EXIT_REFUSED, "--out: the file cannot be written.\n")
@@ -163,12 +181,24 @@ def test_serving_is_the_default(
     served: list[Any] = []
     app = Starlette()
     monkeypatch.setattr("service.app.create_app", lambda settings: served.append(settings) or app)
-    monkeypatch.setattr("uvicorn.run", lambda app, **given: served.append(given))
+    monkeypatch.setattr("service.server.bind", lambda *address: served.append(address) or socket())
+    monkeypatch.setattr("service.server.serve", lambda app, listener: None)
     write_static(tmp_path / "static")
     assert main(words) == EXIT_DONE
-    assert served[0].data == data
-    assert served[1]["host"] == ("::1" if "--host" in words else "127.0.0.1")
-    assert served[1]["port"] == (8123 if "--port" in words else 8000)
+    assert served[1].data == data
+    host, port = "::1" if "--host" in words else "127.0.0.1", 8123 if "--port" in words else 8000
+    assert served[0] == (host, port)
+
+
+def test_an_address_that_cannot_be_taken_is_said_at_once(data: Path, capsys: Any) -> None:
+    with socket() as taken:
+        taken.bind(("127.0.0.1", 0))
+        taken.listen()
+        for port in (taken.getsockname()[1], 65536, -1):
+            assert main(["serve", "--port", str(port)]) == EXIT_FAILED
+            out, err = capsys.readouterr()
+            assert out == ""
+            assert err.startswith("The service cannot listen on 127.0.0.1, port ")
 
 
 def test_the_module_runs_as_a_program(tmp_path: Path) -> None:

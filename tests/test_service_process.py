@@ -107,6 +107,28 @@ def test_a_full_queue_is_refused_health_answers_and_departures_free_the_places(p
     assert call(port, "POST", "/api/footprint", QUICK)[0] == 200
 
 
+def test_whoever_waits_is_told_when_the_service_is_stopped(tmp_path: Path) -> None:
+    found = free_port()
+    command = [sys.executable, "-m", "tests.service_process", str(tmp_path), str(found)]
+    with subprocess.Popen(command, cwd=ROOT, stderr=subprocess.PIPE) as process:
+        try:
+            until(lambda: alive(found) or process.poll() is not None)
+            clients = [ask(found, SLOW) for _ in range(4)]
+            until(lambda: places(found, 2, 2))
+            process.terminate()
+            for client in clients:
+                answer = http.client.HTTPResponse(client)
+                answer.begin()
+                assert answer.status == 503
+                assert json.loads(answer.read())["type"] == "/problems/solve-stopped"
+                client.close()
+            process.wait(2.5)  # less than the grace: nothing was left to wait for
+            assert process.stderr is not None
+            assert process.stderr.read() == b""
+        finally:
+            process.kill()
+
+
 def test_a_body_of_50_mb_is_refused_and_the_service_goes_on(port: int) -> None:
     status, headers, body = call(port, "POST", "/api/footprint", b"[" + b" " * 50_000_000 + b"]")
     assert status == 413
