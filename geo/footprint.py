@@ -407,8 +407,11 @@ def ring_ranges(glide: Glide, grid: Grid, top: NDArray[np.float32]) -> list[tupl
     blocks = ring.block_maxima(top)
     longest = np.zeros(N_RANGES)
     for root in range(n_roots):
-        count = int(anchors[root, k.COUNT])
-        states = rays.starts(glide.air, par, glide.entry, anchors, root, count)
+        # a little more than half a turn each way round: together they look all round
+        count = int(min(anchors[root, k.COUNT], 1.05 * pi / max(anchors[root, k.STEP], 1e-9)))
+        if glide.track_rad is None:
+            count = int(anchors[root, k.COUNT])
+        states = rays.starts(glide.air, par, glide.entry, anchors, root, max(count, 1))
         out = np.empty((len(states), 2))
         ring.ring(top, blocks, run, par, states, need_m, par[k.CLEARANCE_M], out)
         states, out = states[out[:, 1] > 0.0], out[out[:, 1] > 0.0]

@@ -15,7 +15,7 @@ from numba import njit
 from geo.layout import CAP, DX, DY, FAR, LEVEL0_M, LEVEL_STEP_M, SX, SY, SZ, TRACK
 from geo.rays import glide_alt, run_at
 
-BLOCK = 20  # cells along the edge of a block
+BLOCK = 12  # cells along the edge of a block
 NUDGE = 1e-6  # cells; puts a point on an edge into the next cell
 
 
@@ -70,45 +70,52 @@ def ring(
 
 
 @njit(cache=True, nogil=True)
-def _leaves(x: float, y: float, state: Any_, size: int) -> float:
-    """Return how far [cells] from (x, y) the ray leaves its square of `size` cells."""
-    t = 1e30
-    if abs(state[DX]) > 1e-12:
-        edge = (floor(x / size) + (1.0 if state[DX] > 0.0 else 0.0)) * size
-        t = (edge - x) / state[DX]
-    if abs(state[DY]) > 1e-12:
-        edge = (floor(y / size) + (1.0 if state[DY] > 0.0 else 0.0)) * size
-        t = min(t, (edge - y) / state[DY])
-    return t
-
-
-@njit(cache=True, nogil=True)
 def _clear_until(
     top: Any_, blocks: Any_, run: Any_, par: Any_, state: Any_, clearance_m: float, pair: Any_
 ) -> Any_:
     """Return how far [cells] the ray keeps the clearance, block by block."""
-    rows, cols = top.shape
+    rows, cols = blocks.shape
+    x, y, dx, dy, cap = state[SX], state[SY], state[DX], state[DY], state[CAP]
     level = min(int((state[SZ] - par[LEVEL0_M]) / par[LEVEL_STEP_M]), run.shape[0] - 1)
     per_m = run_at(run, level, state[TRACK]) if level >= 0 else 0.0
-    z_at, t_at, t, z_out = state[SZ], 0.0, 0.0, state[SZ]
+    if per_m <= 0.0:
+        return 0.0
+    z_at, t_at, t, z_out, slope = state[SZ], 0.0, 0.0, state[SZ], 1.0 / per_m
     level_end = (z_at - par[LEVEL0_M] - level * par[LEVEL_STEP_M]) * per_m
-    while True:
-        x, y = state[SX] + (t + NUDGE) * state[DX], state[SY] + (t + NUDGE) * state[DY]
-        if not (0.0 <= x < cols and 0.0 <= y < rows):
-            # the last block may stick out of the map
-            past_x, past_y = (x - cols) / max(state[DX], 1e-12), (y - rows) / max(state[DY], 1e-12)
-            return t - max(past_x, past_y, 0.0)
-        t_next, z_in = t + NUDGE + _leaves(x, y, state, BLOCK), z_out
-        while t_next > level_end and per_m > 0.0:
-            z_at, t_at, level = z_at - (level_end - t_at) / per_m, level_end, level - 1
+    c, r = int(floor(x / BLOCK)), int(floor(y / BLOCK))
+    gap_x = BLOCK / abs(dx) if abs(dx) > 1e-12 else FAR
+    gap_y = BLOCK / abs(dy) if abs(dy) > 1e-12 else FAR
+    next_x, next_y, step_c, step_r = FAR, FAR, (1 if dx > 0 else -1), (1 if dy > 0 else -1)
+    if gap_x < FAR:
+        next_x = (((c + 1) * BLOCK - x) if dx > 0 else (x - c * BLOCK)) / abs(dx)
+    if gap_y < FAR:
+        next_y = (((r + 1) * BLOCK - y) if dy > 0 else (y - r * BLOCK)) / abs(dy)
+    while 0 <= r < rows and 0 <= c < cols:
+        t_next, z_in = min(next_x, next_y), z_out
+        while t_next > level_end:
+            z_at, t_at, level = z_at - (level_end - t_at) * slope, level_end, level - 1
             per_m = run_at(run, level, state[TRACK]) if level >= 0 else 0.0
+            if per_m <= 0.0:
+                _walk(top, run, par, state, t, z_in, t_next, clearance_m, 1e30, pair)
+                return pair[0]
+            slope = 1.0 / per_m
             level_end = t_at + par[LEVEL_STEP_M] * per_m
-        z_out = z_at - (t_next - t_at) / per_m if per_m > 0.0 else -1e30
-        if min(z_out, state[CAP]) < blocks[int(y) // BLOCK, int(x) // BLOCK] + clearance_m:
+        z_out = z_at - (t_next - t_at) * slope
+        if min(z_out, cap) < blocks[r, c] + clearance_m:
             _walk(top, run, par, state, t, z_in, t_next, clearance_m, 1e30, pair)
             if pair[0] < t_next - 2.0 * NUDGE:
                 return pair[0]
         t = t_next
+        if next_x < next_y:
+            c += step_c
+            next_x += gap_x
+        else:
+            r += step_r
+            next_y += gap_y
+    # the last block may stick out of the map
+    past_x = (x + t * dx - top.shape[1]) / max(dx, 1e-12)
+    past_y = (y + t * dy - top.shape[0]) / max(dy, 1e-12)
+    return t - max(past_x, past_y, 0.0)
 
 
 @njit(cache=True, nogil=True)

@@ -58,6 +58,7 @@ def create_app(settings: Settings | None = None, solver: Solver | None = None) -
         docs_url=None,
         redoc_url=None,
         lifespan=_lifespan,
+        redirect_slashes=False,  # a redirect would repeat the Host header, and POST twice
         middleware=[
             Middleware(SecurityHeaders),
             Middleware(HeadAsGet),

@@ -9,6 +9,7 @@ from typing import Any
 
 from starlette.datastructures import Headers
 from starlette.responses import Response
+from starlette.routing import Match, Route
 from starlette.types import ASGIApp, Message, Receive, Scope, Send
 
 from service.problems import (
@@ -76,6 +77,14 @@ def first_not_finite(value: Any, parts: tuple[str | int, ...] = ()) -> Any:
     return None
 
 
+def _is_taken(scope: Scope) -> bool:
+    """Return whether a route takes the request; others get 404 or 405, whatever the body."""
+    routes = scope["app"].router.routes if "app" in scope else []
+    return not routes or any(
+        isinstance(route, Route) and route.matches(scope)[0] is Match.FULL for route in routes
+    )
+
+
 class BodyGuard:
     """Pure ASGI middleware that reads a request's body, checks it and hands it on.
 
@@ -102,7 +111,7 @@ class BodyGuard:
         try:
             headers = Headers(scope=scope)
             body = await self._read(headers, receive)
-            if scope["method"] == "POST":
+            if scope["method"] == "POST" and _is_taken(scope):
                 self._check_type(headers)
                 self._check_json(body)
         except _Refused as refused:
@@ -151,6 +160,12 @@ class BodyGuard:
             detail = "The request body must have the content type application/json."
             entry = error_entry((), detail, "application/json")
             raise _Refused(problem(WRONG_MEDIA_TYPE, detail, [entry]))
+        if headers.get("content-encoding", "identity").strip().lower() != "identity":
+            detail = "The request body must not be compressed."  # RFC 9110, section 12.5.3: 415
+            entry = error_entry((), detail, "identity")
+            raise _Refused(
+                problem(WRONG_MEDIA_TYPE, detail, [entry], {"Accept-Encoding": "identity"})
+            )
 
     def _check_json(self, body: bytes | None) -> None:
         if body is None:

@@ -16,10 +16,11 @@ from geo.case import FT_M, KT_MPS, NM_M, REACTION_LOW_HEIGHT_M, GlideCase, Margi
 from geo.footprint import Footprint
 from geo.terrain_source import TerrainSource
 from geo.wind import WindProfile
-from perf.errors import RecordError
+from perf.errors import InputError, RecordError
 from perf.record import AircraftRecord, load_record
 from service.cautions import CAUTIONS, margins_below_default
 from service.schemas import FootprintRequest, MarginsRequest
+from service.settings import FAILURE_SPEED_FACTOR
 
 FPM_MPS = FT_M / 60.0  # foot per minute [m/s]
 COORDINATE_DIGITS = 6  # 0.1 m
@@ -77,13 +78,21 @@ def case_of(request: FootprintRequest, record: AircraftRecord) -> GlideCase:
     RecordError
         The record has no such mass, propeller state or configuration.
     InputError
-        Two wind levels have the same altitude.
+        Two wind levels have the same altitude, or the speed at failure is beyond this aeroplane.
     """
     levels = [
         (level.altitude_ft * FT_M, radians(level.from_deg), level.speed_kt * KT_MPS)
         for level in request.wind
     ]
     failure_kt = request.speed_at_failure_kt
+    fastest_kt = FAILURE_SPEED_FACTOR * record.maximum_speed_eas_mps / KT_MPS
+    if failure_kt is not None and failure_kt > fastest_kt * (1.0 + 1e-9):
+        raise InputError(
+            f"The speed at failure is more than {FAILURE_SPEED_FACTOR:g} times the record's "
+            "maximum glide speed.",
+            "speed_at_failure_kt",
+            f"1 to {fastest_kt:.6g} kt",
+        )
     return GlideCase(
         lon_deg=request.position[0],
         lat_deg=request.position[1],
@@ -125,13 +134,19 @@ def margins_json(margins: Margins, reaction_default_s: float) -> dict[str, float
 def inputs_json(
     request: FootprintRequest, record: AircraftRecord, footprint: Footprint
 ) -> dict[str, Any]:
-    """Return the whole request with its defaults filled in."""
+    """Return the whole request with its defaults filled in, and what was given as it was given.
+
+    So the inputs, sent again, give the same answer to the last digit.
+    """
     inputs = request.model_dump(mode="json")
     case = footprint.case
-    inputs["mass_kg"] = round(case.polar.mass_kg, 3)
+    if request.mass_kg is None:
+        inputs["mass_kg"] = case.polar.mass_kg
     inputs["propeller"] = request.propeller or record.propeller_states[0]
     inputs["configuration"] = request.configuration or record.configurations[0]
-    inputs["margins"] = margins_json(case.margins, reaction_default_s(footprint))
+    usual = margins_json(case.margins, reaction_default_s(footprint))
+    given = request.margins.model_dump(exclude_none=True) if request.margins else {}
+    inputs["margins"] = {**usual, **given}
     return inputs
 
 

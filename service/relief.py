@@ -214,7 +214,7 @@ class Relief:
         self._lock = threading.Lock()
 
     def tile(self, z: int, x: int, y: int) -> Tile | None:
-        """Return a tile, or None off the terrain. Safe to call from several threads."""
+        """Return a tile, or None off the box of every source. Safe to call from several threads."""
         key = (z, x, y)
         with self._lock:
             if key in self._kept:
@@ -252,7 +252,7 @@ class Relief:
         if not np.isnan(ground_m).all():
             return _finished(self._picture(ground_m, within, tile_m))
         if tile_m / TILE_PX < SPECK_CELLS * cell_m:
-            return None
+            within[:] = False  # a box is wider than slanting or voided ground: clear, not missing
         return _finished(np.where(within[..., None], SPECK_RGBA, 0.0))
 
     def _meeting(self, west: float, south: float, east: float, north: float) -> list[TerrainSource]:

@@ -118,7 +118,7 @@ Row = Annotated[int, Path(ge=0, lt=1 << TILE_ZOOM_MAX, description="Row, from th
                **problem_responses(404, 422, 500, 503)},
 )  # fmt: skip
 async def relief_tile(request: Request, z: Zoom, x: Column, y: Row) -> Response:
-    """Return a tile of 256 x 256 pixels; 404 where there is no terrain."""
+    """Return a tile of 256 x 256 pixels, clear where no ground is; 404 off every terrain's box."""
     if x >= tile_count(z) or y >= tile_count(z):
         raise HTTPException(404)
     state = request.app.state

@@ -13,6 +13,7 @@ ALTITUDE_MAX_FT = 60_000.0
 LATITUDE_MAX_DEG = 80.0  # frames and tiles are not checked nearer the poles
 WIND_LEVELS_MAX = 50
 WIND_MAX_KT = 250.0
+FAILURE_SPEED_FACTOR = 1.5  # speed at failure at most, in units of the record's fastest glide
 TILE_ZOOM_MAX = 17  # about 1 m a pixel at 45 degrees: far finer than any post spacing
 
 

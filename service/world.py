@@ -18,7 +18,7 @@ from geo.case import FT_M, KT_MPS, SolveLimits
 from geo.footprint import Footprint
 from geo.sites import Site, load_sites, sites_feature_collection
 from geo.terrain import TerrainStore
-from perf.errors import InputError, TerrainError
+from perf.errors import InputError, ModelError, TerrainError
 from perf.record import AircraftRecord, load_records
 from service import convert
 from service.answers import CatalogAnswer
@@ -101,11 +101,13 @@ class World:
         Raises
         ------
         SettingsError
-            The start file of the data folder is not a footprint request.
+            The start file of the data folder is not a footprint request, or not one of this data.
         """
         path = self.settings.data / START_FILE
-        if path.is_file() and path.stat().st_size <= START_FILE_MAX_BYTES:
+        if path.is_file():
             try:
+                if path.stat().st_size > START_FILE_MAX_BYTES:
+                    raise ValueError("too large for one request")
                 case = json.loads(path.read_bytes())
                 case.pop("note", None)  # for people who read the file
                 request = FootprintRequest.model_validate(case)
@@ -113,8 +115,20 @@ class World:
                 raise SettingsError(
                     f"{START_FILE} in the data folder is not a footprint request."
                 ) from None
+            self._check_start(request)
             return request.model_dump(mode="json", exclude_unset=True)
         return self._middle()
+
+    def _check_start(self, request: FootprintRequest) -> None:
+        """Make sure that the start can be asked for; a faulty terrain file is told elsewhere."""
+        try:
+            case = convert.case_of(request, convert.record_of(request.aircraft, self.records))
+            self.check_place(case.lon_deg, case.lat_deg, case.alt_m)
+        except ModelError as error:
+            if error.field is not None:
+                raise SettingsError(
+                    f"{START_FILE} in the data folder cannot be used: {error.field}: {error.detail}"
+                ) from None
 
     def _middle(self) -> dict[str, Any]:
         """Return a start over the middle of the first terrain file that has ground there."""

@@ -293,7 +293,7 @@ def test_margins_less_safe_than_default_are_bold(open_page: Opener) -> None:
     change(page, "bank_deg", "45")
     settled(page)
     assert page.locator(".margin.bold [name=bank_deg]").count() == 1
-    assert "bank" in page.inner_text("#bolds strong").lower()
+    assert "45 degrees instead of 30 degrees" in page.inner_text("#bolds strong")
     weight = page.eval_on_selector("[name=bank_deg]", "one => getComputedStyle(one).fontWeight")
     assert int(weight) >= 700  # Source: CSS Fonts Level 4, section 2.2: 700 is bold
     page.click("#usual")

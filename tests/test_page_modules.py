@@ -174,21 +174,31 @@ def test_less_safe_margins_are_found_both_ways(runner: Any) -> None:
         };
         const less = (chosen, turn = 300) =>
           [...lessSafe(chosen, table, { glide: { turn_180_loss_ft: turn } })];
+        const judged = (reaction_s, margins_below_default) => [...lessSafe({ reaction_s: 5 }, table,
+          { glide: { turn_180_loss_ft: 300 }, inputs: { margins: { reaction_s } },
+            margins_below_default })];
         return [
           less({}), less({ ratio_factor: 0.95, wind_error_kt: 8 }), less({ wind_error_kt: 5 }),
           less({ bank_deg: 20, clearance_ft: 300, reaction_s: 12 }), less({ reaction_s: 4 }),
           less({}, 801), less({ arrival_height_ft: 1001 }, 801),
+          less({ reaction_s: 3 }), judged(5, ["reaction_s"]), judged(5, []),
+          judged(6, ["reaction_s"]),
         ];
         """
     )
-    # Derived: the defaults are met, or not; 801 ft plus the 200 ft reserve is 1001 ft.
+    # Derived: the defaults are met, or not; 801 ft plus the 200 ft reserve is 1001 ft. A reaction
+    # is less safe below 4 s, or where the answer to that very reaction says so.
     assert found == [
         [],
         ["ratio_factor"],
         ["wind_error_kt"],
         [],
-        ["reaction_s"],
+        [],
         ["arrival_height_ft"],
+        [],
+        ["reaction_s"],
+        ["reaction_s"],
+        [],
         [],
     ]
 

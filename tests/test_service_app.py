@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+import json
 import shutil
 from collections.abc import Iterator
 from importlib import resources
@@ -63,6 +64,15 @@ def test_inputs_are_the_request_with_its_defaults(client: TestClient) -> None:
     assert part["limits"][0].startswith("The bank in turns is less safe")
 
 
+def test_inputs_keep_every_digit_given(client: TestClient) -> None:
+    given = {"bank_deg": 30.123456789012345, "wind_error_kt": 1 / 3}
+    asked = {**REQUEST, "mass_kg": 600.123456789, "margins": given}
+    answer = client.post("/api/footprint", json=asked).json()
+    assert answer["inputs"]["mass_kg"] == 600.123456789
+    assert given.items() <= answer["inputs"]["margins"].items()
+    assert client.post("/api/footprint", json=answer["inputs"]).json() == answer
+
+
 def test_a_section_has_the_promised_shape(client: TestClient) -> None:
     to = [MIDDLE[0] + 0.05, MIDDLE[1]]
     response = client.post("/api/section", json={**REQUEST, "to": to})
@@ -115,6 +125,21 @@ def test_head_is_get_without_the_body(client: TestClient, path: str) -> None:
     assert head.content == b""
     for name in ("content-type", "content-length", "etag"):
         assert head.headers.get(name) == get.headers.get(name)
+
+
+@pytest.mark.parametrize("body", [b"", b"{", b"{}"])
+def test_a_post_where_there_is_none_is_refused_as_such(client: TestClient, body: bytes) -> None:
+    for path in GETS[:-1]:
+        answer = client.post(path, content=body)
+        assert (answer.status_code, answer.headers["allow"]) == (405, "GET, HEAD")
+    assert client.post("/nowhere", content=body).status_code == 404
+
+
+def test_no_answer_is_a_redirect(client: TestClient) -> None:
+    for path in ("/api/footprint/", "/health/", "/api/catalog/"):
+        answer = client.get(path, headers={"host": "elsewhere.example"}, follow_redirects=False)
+        assert answer.status_code == 404
+        assert answer.headers["content-type"] == "application/problem+json"
 
 
 @pytest.mark.parametrize("path", GETS)
@@ -177,10 +202,24 @@ def test_a_start_file_is_used_or_refused(tmp_path: Path) -> None:
     app = create_app(settings, stand_in)
     assert app.state.start["altitude_ft"] == 3000
     assert "note" not in app.state.start
-    for text in ("[]", "{", '{"position": 1}'):
+    good = {"position": [-19.9, 49.9], "altitude_ft": 3000, "aircraft": "test-two"}
+    for case in ({"aircraft": "none"}, {"aircraft": {}}, {"altitude_ft": 9}, {"position": [0, 0]},
+                 {"mass_kg": 1}):  # fmt: skip
+        start.write_text(json.dumps({**good, **case}))
+        with pytest.raises(SettingsError, match=rf"start\.json .* cannot be used: {next(iter(case))}"):
+            create_app(settings, stand_in)
+    for text in ("[]", "{", '{"position": 1}', json.dumps(good) + " " * 65_536):
         start.write_text(text)
         with pytest.raises(SettingsError, match=r"start\.json"):
             create_app(settings, stand_in)
+
+
+def test_a_start_over_a_faulty_terrain_file_does_not_stop_the_service(tmp_path: Path) -> None:
+    settings = settings_in(tmp_path)
+    (settings.data / "start.json").write_text(json.dumps(REQUEST))
+    terrain = settings.data / "terrain" / "isle.tif"
+    terrain.write_bytes(terrain.read_bytes()[:200_000])
+    assert create_app(settings, stand_in).state.start == REQUEST
 
 
 def test_the_data_folder_comes_from_the_environment(monkeypatch: pytest.MonkeyPatch) -> None:

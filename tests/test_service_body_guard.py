@@ -46,6 +46,14 @@ def client() -> TestClient:
     return TestClient(BodyGuard(echo_length, MAX_BYTES, MAX_DEPTH))
 
 
+def test_a_compressed_body_is_refused(client: TestClient) -> None:
+    answer = client.post("/", content=b"{}", headers={**JSON, "content-encoding": "gzip"})
+    assert answer.status_code == 415  # Source: RFC 9110, section 15.5.16
+    assert answer.headers["accept-encoding"] == "identity"
+    plain = client.post("/", content=b"{}", headers={**JSON, "content-encoding": "Identity"})
+    assert plain.status_code == 200
+
+
 @given(values)
 @settings(deadline=None)
 def test_depth_is_that_of_the_parsed_value(value: Any) -> None:

@@ -121,6 +121,14 @@ def test_wind_levels_at_one_altitude_are_refused(records: Any) -> None:
         convert.case_of(request(wind=[level, level]), records["test-two"])
 
 
+def test_the_speed_at_failure_is_at_most_half_again_the_fastest_glide(records: Any) -> None:
+    # Derived: the record's fastest glide is 110 kt
+    convert.case_of(request(speed_at_failure_kt=165), records["test-two"])
+    with pytest.raises(InputError, match=r"1\.5 times") as caught:
+        convert.case_of(request(speed_at_failure_kt=166), records["test-two"])
+    assert (caught.value.field, caught.value.allowed) == ("speed_at_failure_kt", "1 to 165 kt")
+
+
 def area_json(area: MultiPolygon) -> dict[str, Any]:
     found = convert.geometry_json(area)
     assert found is not None

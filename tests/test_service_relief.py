@@ -10,12 +10,13 @@ from typing import Any
 
 import numpy as np
 import pytest
+import rasterio
 from PIL import Image
 
 from geo.terrain import TerrainStore
 from service import relief
 from service.relief import Relief, cubic, fill_voids, intervals_for, shade
-from tests.service_support import MIDDLE, NORTH, VOID, WEST, write_data
+from tests.service_support import MIDDLE, NORTH, POSTS, VOID, WEST, write_data
 
 
 @pytest.fixture(scope="module")
@@ -90,6 +91,17 @@ def test_a_void_is_hatched(drawn: Relief) -> None:
     shades = {tuple(colour) for colour in image[..., :3].reshape(-1, 3)}
     assert tuple(relief.VOID_RGB) in shades
     assert tuple(relief.HATCH_RGB) in shades
+
+
+def test_a_tile_within_the_box_is_clear_where_no_ground_is(tmp_path: Path) -> None:
+    data = write_data(tmp_path)
+    with rasterio.open(data / "terrain" / "isle.tif", "r+") as file:
+        file.write(np.full((POSTS, POSTS), -9999.0, dtype=np.float32), 1)
+    empty = Relief(TerrainStore(data), 10_000_000)
+    for z in (9, 13, 17):
+        x, y = tile_at(*MIDDLE, z)
+        assert not pixels(empty, z, x, y)[..., 3].any()
+    assert empty.tile(13, *tile_at(WEST - 1.0, NORTH, 13)) is None
 
 
 @pytest.mark.parametrize("z", [13, 15])

@@ -8,7 +8,7 @@ const L = /** @type {any} */ (globalThis).L;
 const PANES = /** @type {const} */ ([
   ["ground", 150], ["shade", 350], ["outline", 410], ["way", 420], ["sites", 600], ["aeroplane", 650],
 ]);
-const SLIVER = 0.04; // of a tile: a box may be wider than its slanting terrain by this much
+const SLIVER = 0.08; // of a tile: a box may be wider than its slanting terrain by this much
 const RELIEF = "/api/tiles/relief/{z}/{x}/{y}.png";
 
 export class Chart {
@@ -114,7 +114,10 @@ export class Chart {
     if (!section) return;
     const profile = section.profile.map((/** @type {any} */ point) => point.position);
     const path = section.path?.geometry.coordinates;
-    if (!path) L.polyline(line(profile), this.style("way", "bearing-line")).addTo(this.way);
+    if (!path) {
+      L.polyline(line(profile), this.style("way", "bearing-case")).addTo(this.way);
+      L.polyline(line(profile), this.style("way", "bearing-line")).addTo(this.way);
+    }
     if (path) {
       L.polyline(line(path), this.style("way", "way-case")).addTo(this.way);
       L.polyline(line(path), this.style("way", "way")).addTo(this.way);

@@ -42,7 +42,8 @@ export function defaultOf(table, key) {
 }
 
 /**
- * Which margins are less safe than their default.
+ * Which margins are less safe than their default. That of the reaction depends on the height above
+ * ground: only the answer to that very reaction knows, unless it is below both defaults.
  *
  * @param {Record<string, number>} chosen margins that differ from the default
  * @param {MarginTable} table the catalogue's `margins`
@@ -53,11 +54,13 @@ export function lessSafe(chosen, table, answer) {
   /** @type {Set<string>} */
   const found = new Set();
   for (const { key } of MARGINS) {
-    const usual = key === "reaction_s" ? REACTION_HIGH_S : defaultOf(table, key);
+    const usual = key === "reaction_s" ? REACTION_LOW_S : defaultOf(table, key);
     const value = chosen[key];
     if (value === undefined || usual === null) continue;
     if (table[key].less_safe === "above" ? value > usual : value < usual) found.add(key);
   }
+  const judged = answer?.inputs?.margins.reaction_s === chosen.reaction_s;
+  if (judged && answer?.margins_below_default?.includes("reaction_s")) found.add("reaction_s");
   const turn_ft = answer?.glide.turn_180_loss_ft;
   const arrival = chosen.arrival_height_ft ?? defaultOf(table, "arrival_height_ft");
   if (arrival !== null && typeof turn_ft === "number" && arrival < turn_ft + TURN_RESERVE_FT) {

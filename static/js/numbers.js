@@ -42,9 +42,9 @@ export function showFigures(list, answer) {
     flown,
     leaderRow("Glide ratio of the record", ratio(glide.ratio_record)),
     leaderRow("Glide ratio with margins", ratio(glide.ratio_used)),
-    leaderRow("Sink at that speed", feetPerMinute(glide.sink_fpm)),
+    leaderRow("Sink at that speed, with margins", feetPerMinute(glide.sink_fpm)),
     leaderRow(`180\u00b0 turn at ${number(inputs.margins.bank_deg)}\u00b0 bank loses`, feet(glide.turn_180_loss_ft)),
-    typeof inputs.margins.reaction_s === "number"
+    typeof inputs.margins.reaction_s === "number" && inputs.track_deg !== null
       ? leaderRow("Straight on before it", seconds(inputs.margins.reaction_s)) : null,
     leaderRow("Area by any path", squareKilometres(all)),
     leaderRow("Area by one straight glide", squareKilometres(direct)),

@@ -21,6 +21,11 @@ const NAMES = new Map([
   ["/margins/excess_speed_credit", "Excess speed credit"],
 ]);
 
+const UNITS = new Map([
+  ["ft", "\u00a0ft"], ["kt", "\u00a0kt"], ["kg", "\u00a0kg"], ["deg", "\u00b0"], ["c", "\u00a0\u00b0C"],
+  ["hpa", "\u00a0hPa"], ["s", "\u00a0s"], ["fpm", "\u00a0ft/min"],
+]);
+
 /**
  * @param {string} pointer RFC 6901
  * @returns {string} the name that the page gives to that field
@@ -54,15 +59,27 @@ export function faultOf(status, body, retryAfter) {
   const wait = retryAfter ? ` Ask again in ${retryAfter} s.` : " Ask again in a moment.";
   const fields = (Array.isArray(body?.errors) ? body.errors : []).map((/** @type {any} */ entry) => ({
     name: String(entry.pointer ?? ""),
-    text: [entry.detail === body.detail ? "" : sentence(entry.detail), entry.allowed ? `Allowed is ${sentence(entry.allowed)}` : ""]
+    text: [entry.detail === body.detail ? "" : sentence(entry.detail),
+      entry.allowed ? `Allowed is ${sentence(withUnit(entry.allowed, entry.pointer))}` : ""]
       .filter(Boolean).join(" "),
   }));
+  const detail = sentence(body?.detail ?? `It answered with status ${status}.`);
+  const repeats = detail.startsWith("/") && fields.length > 0; // the field's own words follow
   return {
     title: String(body?.title ?? "The service could not answer"),
-    detail: sentence(body?.detail ?? `It answered with status ${status}.`) + (busy ? wait : ""),
+    detail: (repeats ? "" : detail) + (busy ? wait : ""),
     fields,
     retry: busy || status >= 500,
   };
+}
+
+/**
+ * @param {unknown} allowed bare numbers get the unit in which the field's name ends
+ * @param {unknown} pointer
+ */
+function withUnit(allowed, pointer) {
+  const unit = UNITS.get(String(pointer).split("_").pop() ?? "");
+  return unit && /\d$/.test(String(allowed)) ? `${allowed}${unit}` : String(allowed);
 }
 
 /** @returns {Fault} for a service that does not answer at all */

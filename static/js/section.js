@@ -6,6 +6,7 @@ import { plot } from "./profile.js";
 
 const WIDTH = 360;
 const HEIGHT = 190;
+const LETTER = 5.4; // mean width of a bold letter, a little generous
 const FRAME = { left: 46, right: WIDTH - 12, top: 26, bottom: HEIGHT - 34 };
 
 /**
@@ -19,12 +20,16 @@ export function showSection(box, section, name, onClose) {
   const close = el("button", { type: "button", class: "quiet" }, "Put away");
   close.addEventListener("click", onClose);
   const bent = by === "bent" && section.path_profile;
+  const last = section.profile[section.profile.length - 1];
+  const turned = last?.along_nm > section.distance_nm + 0.02;
   box.replaceChildren(
     el("h2", {}, name ?? place(section.to[1], section.to[0])),
     el("p", { class: "verdict" }, within ? String(reason.text) : "Out of modelled range"),
     within ? "" : el("p", { class: "reason" }, String(reason.text)),
-    drawing(bent ? section.path_profile : section.profile, within ? null : reason.ridge,
-      bent ? "Section along the path" : "Section along the straight line"),
+    bent ? drawing(section.path_profile, null, "Section along the path", true)
+      : drawing(section.profile, within ? null : reason.ridge,
+        turned ? "Section along the first turn and the straight line after it" : "Section along the straight line",
+        turned),
     el("dl", { class: "leaders" }, ...rows(section)),
     el("p", { class: "end" }, close));
   box.hidden = false;
@@ -41,11 +46,25 @@ function rows(section) {
     way ? leaderRow("Reached by", way) : null,
     section.path ? leaderRow("Length of the path", nauticalMiles(section.path.properties.length_nm)) : null,
     leaderRow("Ground there", feet(section.ground_ft)),
-    section.arrival_altitude_ft === null ? null
-      : leaderRow("Altitude on arrival", feet(section.arrival_altitude_ft)),
+    ...arrival(section),
     section.surplus_ft === null ? null
       : leaderRow(section.surplus_ft < 0 ? "Height shortfall" : "Height surplus", feet(Math.abs(section.surplus_ft))),
   ].filter((row) => row !== null);
+}
+
+/**
+ * What the surplus is made of: it is counted from the highest point of the cell, trees included.
+ *
+ * @param {any} section
+ */
+function arrival({ arrival_altitude_ft: altitude, surplus_ft: surplus, inputs }) {
+  if (altitude === null) return [];
+  const kept = Math.max(inputs.margins.arrival_height_ft, inputs.margins.clearance_ft);
+  return [
+    surplus === null ? null : leaderRow("Highest point counted there", feet(altitude - surplus - kept)),
+    surplus === null ? null : leaderRow("Height kept above it", feet(kept)),
+    leaderRow("Altitude on arrival", feet(altitude)),
+  ];
 }
 
 /**
@@ -60,8 +79,9 @@ function plural(count, word) {
  * @param {any[]} profile
  * @param {any} ridge
  * @param {string} title
+ * @param {boolean} flown whether the distance is that along the path, not from the aeroplane
  */
-function drawing(profile, ridge, title) {
+function drawing(profile, ridge, title, flown) {
   if (profile.length < 2) return el("p", { class: "aside" }, "Too near for a section.");
   const lines = plot(profile, FRAME);
   const mark = ridge ? ridgeMark(lines, ridge) : [];
@@ -71,7 +91,7 @@ function drawing(profile, ridge, title) {
     svg("path", { class: "hatch", d: "M-2 2 2-2M0 8 8 0M6 10 10 6" }))),
   ...lines.voids.map(({ x, width }) => svg("rect", { fill: "url(#hatch)", x, y: FRAME.top,
     width: Math.max(width, 1), height: FRAME.bottom - FRAME.top })),
-  ...axes(lines),
+  ...axes(lines, flown ? "nm flown" : "nm from the aeroplane"),
   svg("path", { class: "ground", d: lines.ground }),
   svg("path", { class: "surface", d: lines.surface }),
   svg("path", { class: "required", d: lines.required }),
@@ -80,8 +100,11 @@ function drawing(profile, ridge, title) {
   return el("figure", {}, picture, key(title));
 }
 
-/** @param {import("./profile.js").Plot} lines */
-function axes(lines) {
+/**
+ * @param {import("./profile.js").Plot} lines
+ * @param {string} measure what is measured to the right
+ */
+function axes(lines, measure) {
   const up = lines.up.flatMap(({ at, value }) => [
     svg("path", { class: "grid", d: `M${FRAME.left} ${at}H${FRAME.right}` }),
     svg("text", { x: FRAME.left - 6, y: at + 4, "text-anchor": "end" }, number(value))]);
@@ -90,7 +113,7 @@ function axes(lines) {
     svg("text", { x: at, y: FRAME.bottom + 15, "text-anchor": "middle" }, number(value, digits)));
   return [...up, ...across,
     svg("text", { x: FRAME.left - 6, y: FRAME.top - 13, "text-anchor": "end" }, "ft"),
-    svg("text", { x: FRAME.right, y: HEIGHT - 4, "text-anchor": "end" }, "nm from the aeroplane"),
+    svg("text", { x: FRAME.right, y: HEIGHT - 4, "text-anchor": "end" }, measure),
     svg("path", { class: "base", d: `M${FRAME.left} ${FRAME.bottom}H${FRAME.right}` })];
 }
 
@@ -101,11 +124,12 @@ function axes(lines) {
 function ridgeMark(lines, ridge) {
   const x = lines.toX(ridge.distance_nm);
   const y = Math.max(lines.toY(ridge.elevation_ft), FRAME.top + 8);
-  const late = x > WIDTH / 2;
+  const words = `ridge ${feet(ridge.elevation_ft)}, short by ${feet(ridge.short_ft)}`;
+  const width = words.length * LETTER;
+  const start = Math.min(Math.max(x - width / 2, FRAME.left), FRAME.right - width);
   return [
     svg("path", { class: "mark", d: `M${x} ${y}V${FRAME.top - 8}` }),
-    svg("text", { class: "strong", x: late ? x - 5 : x + 5, y: FRAME.top - 4, "text-anchor": late ? "end" : "start" },
-      `ridge ${feet(ridge.elevation_ft)}, short by ${feet(ridge.short_ft)}`)];
+    svg("text", { class: "strong", x: start, y: FRAME.top - 13 }, words)];
 }
 
 /** @param {string} title */

@@ -54,20 +54,22 @@ export function showHeadline(answer) {
 }
 
 /**
- * Mark the outline as coarse, in words.
+ * Mark the outline as coarse, or as not there, in words: without it no ground is darkened.
  *
  * @param {any} answer or null
  */
 export function showCoarse(answer) {
   const slip = byId("coarse");
   const coarse = answer?.detail === "coarse" || answer?.inputs?.detail === "coarse";
-  slip.hidden = !coarse;
+  slip.hidden = answer !== null && !coarse;
+  if (!answer) slip.textContent = "No answer: the map does not show what is in range";
   if (coarse) slip.textContent = `Coarse outline while moving, ${metres(answer.cell_m)} cells`;
 }
 
 /** @param {any} answer whose margins may be less safe than their default, or null */
 export function showBolds(answer) {
-  const sentences = answer?.margins_below_default ?? [];
+  const count = answer?.margins_below_default?.length ?? 0;
+  const sentences = (answer?.limits ?? []).slice(0, count); // the limits begin with one for each
   const line = byId("bolds");
   line.hidden = sentences.length === 0;
   line.replaceChildren(el("strong", {}, sentences.join(" ")));
@@ -88,5 +90,7 @@ export function showFault(fault, onRetry) {
     el("li", {}, el("strong", {}, field.name ? fieldName(field.name) : "Request"), ": ", field.text));
   const again = fault.retry && onRetry ? el("button", { type: "button", class: "plain" }, "Ask again") : null;
   again?.addEventListener("click", () => onRetry?.());
-  box.replaceChildren(el("h2", {}, fault.title), el("p", {}, fault.detail), el("ul", {}, ...items), again ?? "");
+  const detail = fault.detail ? el("p", {}, fault.detail) : "";
+  box.replaceChildren(el("h2", {}, fault.title), detail, el("ul", {}, ...items), again ?? "");
+  box.scrollIntoView({ block: "nearest" });
 }
