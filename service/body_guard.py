@@ -9,7 +9,7 @@ from typing import Any
 
 from starlette.datastructures import Headers
 from starlette.responses import Response
-from starlette.routing import Match, Route
+from starlette.routing import Match, Mount
 from starlette.types import ASGIApp, Message, Receive, Scope, Send
 
 from service.problems import (
@@ -81,7 +81,7 @@ def _is_taken(scope: Scope) -> bool:
     """Return whether a route takes the request; others get 404 or 405, whatever the body."""
     routes = scope["app"].router.routes if "app" in scope else []
     return not routes or any(
-        isinstance(route, Route) and route.matches(scope)[0] is Match.FULL for route in routes
+        not isinstance(route, Mount) and route.matches(scope)[0] is Match.FULL for route in routes
     )
 
 

@@ -131,7 +131,8 @@ def test_head_is_get_without_the_body(client: TestClient, path: str) -> None:
 def test_a_post_where_there_is_none_is_refused_as_such(client: TestClient, body: bytes) -> None:
     for path in GETS[:-1]:
         answer = client.post(path, content=body)
-        assert (answer.status_code, answer.headers["allow"]) == (405, "GET, HEAD")
+        assert answer.status_code == 405
+        assert set(answer.headers["allow"].split(", ")) == {"GET", "HEAD"}
     assert client.post("/nowhere", content=body).status_code == 404
 
 
@@ -206,7 +207,7 @@ def test_a_start_file_is_used_or_refused(tmp_path: Path) -> None:
     for case in ({"aircraft": "none"}, {"aircraft": {}}, {"altitude_ft": 9}, {"position": [0, 0]},
                  {"mass_kg": 1}):  # fmt: skip
         start.write_text(json.dumps({**good, **case}))
-        with pytest.raises(SettingsError, match=rf"start\.json .* cannot be used: {next(iter(case))}"):
+        with pytest.raises(SettingsError, match=f"cannot be used: {next(iter(case))}"):
             create_app(settings, stand_in)
     for text in ("[]", "{", '{"position": 1}', json.dumps(good) + " " * 65_536):
         start.write_text(text)
