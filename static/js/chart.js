@@ -8,7 +8,7 @@ const L = /** @type {any} */ (globalThis).L;
 const PANES = /** @type {const} */ ([
   ["ground", 150], ["shade", 350], ["outline", 410], ["way", 420], ["sites", 600], ["aeroplane", 650],
 ]);
-const SLIVER = 0.08; // of a tile: a box may be wider than its slanting terrain by this much
+const SLIVER = 0.001; // of a tile: the boxes of the catalogue are rounded, and off them there is no tile
 const RELIEF = "/api/tiles/relief/{z}/{x}/{y}.png";
 
 export class Chart {
