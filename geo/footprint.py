@@ -35,7 +35,7 @@ Array = NDArray[np.float64]
 
 FIRST_TURN_MAX_RAD = 210.0 * pi / 180.0  # either way round; farther round is left to the front
 MAX_ANCHORS = 60_000
-ANCHOR_SPACING_CELLS = 3
+ANCHOR_SPACING_M = 90.0  # bends to one side are not tried closer together
 JUMP_M = 10.0  # a label lower than its neighbour's by this much, and by the glide over
 JUMP_CELLS = 2.0  # so many cells, is worth a new bend
 ROOM_M = 5.0  # height above the clearance that a bend must have to spare
@@ -266,7 +266,10 @@ def label(
     ray = np.full(top.shape, -1, dtype=np.int32)
     anchors = np.zeros((MAX_ANCHORS, k.N_ANCHOR))
     run = glide.run / grid.cell_m
-    n_roots = _roots(glide, grid, top, run, par, anchors)
+    # a power of two: the headings of a shorter glide are among those of a longer one, so that
+    # neither more reach nor less margin loses a straight glide
+    n_rays = 2 ** int(np.ceil(np.log2(_rim_cells(glide, par))))
+    n_roots = _roots(glide, grid, top, run, par, anchors, n_rays)
     touched = np.empty(0, dtype=np.int32)
     for root in range(n_roots):
         front.fan(
@@ -276,7 +279,7 @@ def label(
     straight = alt >= top + np.float32(need_m)
     n_anchors = front.spread(
         top, alt, ray, run, glide.entry, glide.air, par, anchors, n_roots, cancel,
-        ANCHOR_SPACING_CELLS,
+        max(round(ANCHOR_SPACING_M / grid.cell_m), 1),
     ) if n_roots and bend else n_roots  # fmt: skip
     _check(cancel)
     reach = alt >= top + np.float32(need_m)
@@ -298,10 +301,19 @@ def _parameters(glide: Glide, grid: Grid, floor_m: float) -> Array:
     return par
 
 
+def _rim_cells(glide: Glide, par: Array) -> float:
+    """Return the most cells that the rim of the glide can have: as many rays are needed."""
+    reach = (glide.start_alt_m - par[k.FLOOR_M]) * par[k.MAX_RUN]
+    return float(2 * pi * max(reach, 8.0))
+
+
 def _roots(
-    glide: Glide, grid: Grid, top: NDArray[np.float32], run: Array, par: Array, anchors: Array
-) -> int:
+    glide: Glide, grid: Grid, top: NDArray[np.float32], run: Array, par: Array, anchors: Array,
+    n_rays: int,
+) -> int:  # fmt: skip
     """Write the fans that leave the failure itself and return how many they are.
+
+    `n_rays` is the number of rays all round.
 
     With a track: one ray straight on from the failure, then the right and the left first turn
     from the end of the reaction. Without: one fan all round from the failure. None where the
@@ -311,14 +323,14 @@ def _roots(
     x_m, y_m = grid.frame.to_xy_m(case.lon_deg, case.lat_deg)
     x, y = float(x_m) / grid.cell_m - grid.col0, float(y_m) / grid.cell_m - grid.row0
     z = glide.start_alt_m
-    reach = max((z - par[k.FLOOR_M]) * par[k.MAX_RUN], 8.0)
+    step = 2 * pi / n_rays
     root = anchors[0]
     root[k.AX], root[k.AY], root[k.AZ], root[k.PARENT] = x, y, z, -1
     root[k.HX], root[k.HY], root[k.SIDE] = 0.0, 1.0, 1.0
     if not rays.is_clear(top, par, root):
         return 0
     if glide.track_rad is None:
-        root[k.COUNT], root[k.STEP] = np.ceil(2 * pi * reach), 2 * pi / np.ceil(2 * pi * reach)
+        root[k.COUNT], root[k.STEP] = n_rays, step
         return 1
     dx, dy = sin(glide.track_rad), cos(glide.track_rad)
     if not rays.heading_for(glide.air, par, z, dx, dy, root[k.HX : k.HY + 1]):
@@ -332,7 +344,7 @@ def _roots(
         turn = anchors[j]
         turn[:] = root
         turn[k.AX], turn[k.AY], turn[k.AZ], turn[k.SIDE], turn[k.TURNS] = *end, side, 1.0
-        turn[k.STEP], turn[k.COUNT] = 1.0 / reach, np.floor(FIRST_TURN_MAX_RAD * reach)
+        turn[k.STEP], turn[k.COUNT] = step, np.floor(FIRST_TURN_MAX_RAD / step)
         turn[k.OFFSET] = anchors[j - 1, k.OFFSET] + anchors[j - 1, k.COUNT]
     return 3
 
@@ -403,7 +415,7 @@ def ring_ranges(glide: Glide, grid: Grid, top: NDArray[np.float32]) -> list[tupl
     need_m = arrival_m(glide.case)
     par = _parameters(glide, grid, min(float(top.min()), glide.case.alt_m) + need_m)
     anchors, run = np.zeros((4, k.N_ANCHOR)), glide.run / grid.cell_m
-    n_roots = _roots(glide, grid, top, run, par, anchors)
+    n_roots = _roots(glide, grid, top, run, par, anchors, int(_rim_cells(glide, par)))
     blocks = ring.block_maxima(top)
     longest = np.zeros(N_RANGES)
     for root in range(n_roots):

@@ -202,7 +202,6 @@ def spread(
         if not _add_anchor(run, entry, air, par, anchors, n_anchors, ray[r, c], cell, cols, track):
             continue
         mask = _sides(top, alt, par, r, c, track[0], track[1]) & ~seen
-        marks[r // spacing, c // spacing] |= mask
         for bit in range(1, 3):
             if not mask & bit:
                 continue
@@ -215,6 +214,8 @@ def spread(
                 top, alt, ray, run, entry, air, par, anchors, n_anchors, touched, False, cancel
             )
             n_anchors += 1
+            if n_touched:  # a fan that found nothing leaves the place open to its neighbours
+                marks[r // spacing, c // spacing] |= bit
             for j in range(min(n_touched, touched.shape[0])):
                 tr, tc = touched[j] // cols, touched[j] % cols
                 if link[touched[j]] == -2 and _sides(top, alt, par, tr, tc, 1.0, 0.0):
