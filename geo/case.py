@@ -47,6 +47,11 @@ class Margins:
     downdraft_mps: float = 0.0
     excess_speed_credit: float = 0.0
 
+    @property
+    def arrival_m(self) -> float:
+        """Height above the ground that counts on arrival [m]: never below the clearance."""
+        return max(self.arrival_height_m, self.clearance_m)
+
     @staticmethod
     def neutral() -> Margins:
         """Return the bare physics: every margin at the value that takes nothing off."""

@@ -72,9 +72,7 @@ def _beyond(ground: float) -> Explanation:
 
 
 def _need_m(answer: Footprint, row: int, col: int) -> float:
-    margins = answer.case.margins
-    top = float(answer.labels.top_m[row, col])
-    return top + max(margins.arrival_height_m, margins.clearance_m)
+    return float(answer.labels.top_m[row, col]) + answer.case.margins.arrival_m
 
 
 def _labelled(answer: Footprint, row: int, col: int, ground: float) -> Explanation:
@@ -84,13 +82,16 @@ def _labelled(answer: Footprint, row: int, col: int, ground: float) -> Explanati
     surplus = alt - _need_m(answer, row, col)
     if surplus < 0.0:
         text = (
-            f"Within the clearance but {_ft(-surplus)} below the arrival height of"
-            f" {_ft(max(answer.case.margins.arrival_height_m, answer.case.margins.clearance_m))}."
+            f"The clearance is kept on the way, but the arrival is {_ft(-surplus)} below the"
+            f" arrival height of {_ft(answer.case.margins.arrival_m)}."
         )
         return _out("reserve", text, ground, alt, surplus)
     by = "straight" if labels.straight[row, col] else "bent"
     if not room_to_lose(answer, row, col):
-        text = f"No room to lose height here: surplus {_ft(surplus)}, terrain too close to circle."
+        text = (
+            f"Reached with a surplus of {_ft(surplus)}, but no room to lose height here: a circle"
+            " drifting with the wind would not keep the clearance."
+        )
         return _out("no_room", text, ground, alt, surplus)
     how = "by a straight glide" if by == "straight" else "by a path that bends round terrain"
     text = f"Within modelled gliding range {how}, surplus {_ft(surplus)}."
@@ -129,18 +130,20 @@ def _unlabelled(answer: Footprint, lon: float, lat: float, ground: float) -> Exp
         text = "The wind is too strong to hold a straight track to this place at some level."
         return _out("wind", text, ground)
     surplus = path.claimed_alt_m - _need_m(answer, row, col)
-    if surplus < 0.0:
+    ridge = _first_conflict(answer, path)
+    if surplus < 0.0 and (ridge is None or ridge.short_m <= -surplus):
         text = f"Out of height: a straight glide would arrive {_ft(-surplus)} too low."
         return _out("height", text, ground, None, surplus)
-    ridge = _first_conflict(answer, path)
     if ridge is None:
         text = "Hidden by terrain beside the straight glide, and no path round it was found."
         return _out("ridge", text, ground, None, None)
     text = (
         f"A ridge is in the way: ground of {_ft(ridge.elevation_m)} at"
-        f" {ridge.distance_m / NM_M:.1f} nm needs {_ft(ridge.short_m)} more height than the glide"
-        " has there, and no path round it was found."
+        f" {ridge.distance_m / NM_M:.1f} nm flown needs {_ft(ridge.short_m)} more height than the"
+        " glide has there, and no path round it was found."
     )
+    if surplus < 0.0:
+        text += f" Beyond it the glide would arrive {_ft(-surplus)} too low as well."
     return _out("ridge", text, ground, None, None, ridge)
 
 
@@ -231,8 +234,7 @@ def _site(answer: Footprint, site: Site) -> SiteReach | None:
     bearing, _, distance = GEOD.inv(case.lon_deg, case.lat_deg, site.lon, site.lat)
     extra = 0.0
     if site.arrival_height_m is not None:
-        normal = max(case.margins.arrival_height_m, case.margins.clearance_m)
-        extra = max(site.arrival_height_m - normal, 0.0)
+        extra = max(site.arrival_height_m - answer.case.margins.arrival_m, 0.0)
     surplus = None if why.surplus_m is None else why.surplus_m - extra
     in_range = why.within_range and surplus is not None and surplus >= 0.0
     note = None if in_range else why.text

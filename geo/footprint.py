@@ -219,18 +219,13 @@ def grid_for(store: TerrainStore, glide: Glide, frame: Frame, limits: SolveLimit
     xs, ys = np.meshgrid(np.linspace(west, east, 49) + x_m, np.linspace(south, north, 49) + y_m)
     ground = store.ground_m(*frame.to_lonlat(xs.ravel(), ys.ravel()))
     lowest_m = min(float(np.nanmin(ground, initial=np.inf)), case.alt_m) - LOWEST_SPARE_M
-    reach = reach_box_m(glide, lowest_m + arrival_m(case))
+    reach = reach_box_m(glide, lowest_m + case.margins.arrival_m)
     return choose_grid(frame, float(x_m), float(y_m), reach, limits, case.detail)
 
 
 def _check(cancel: NDArray[np.uint8]) -> None:
     if cancel[0]:
         raise Cancelled
-
-
-def arrival_m(case: GlideCase) -> float:
-    """Return the height above the ground that counts on arrival [m]: never below the clearance."""
-    return max(case.margins.arrival_height_m, case.margins.clearance_m)
 
 
 def label(
@@ -260,7 +255,7 @@ def label(
     void = np.isnan(top_m)
     lowest_m = float(np.nanmin(top_m, initial=np.inf))
     top = np.where(void, np.float32(np.inf), top_m)
-    need_m = arrival_m(glide.case)
+    need_m = glide.case.margins.arrival_m
     par = _parameters(glide, grid, min(lowest_m, glide.case.alt_m) + need_m)
     alt = np.full(top.shape, k.UNREACHED, dtype=np.float32)
     ray = np.full(top.shape, -1, dtype=np.int32)
@@ -412,7 +407,7 @@ def ring_ranges(glide: Glide, grid: Grid, top: NDArray[np.float32]) -> list[tupl
     top
         Highest point of each cell [m], +inf where blocked, shape ``(n_rows, n_cols)``.
     """
-    need_m = arrival_m(glide.case)
+    need_m = glide.case.margins.arrival_m
     par = _parameters(glide, grid, min(float(top.min()), glide.case.alt_m) + need_m)
     anchors, run = np.zeros((4, k.N_ANCHOR)), glide.run / grid.cell_m
     n_roots = _roots(glide, grid, top, run, par, anchors, int(_rim_cells(glide, par)))

@@ -15,8 +15,9 @@ from shapely.geometry.base import BaseGeometry
 from geo.frame import Frame
 
 SIMPLIFY_CELLS = 0.7  # largest shift of an outline by simplification [cells]
-SPECK_CELLS = 3.5  # islands and holes of up to 3 cells are left out: a hole of 3 cells lies
-# within one cell of reached ground all over, and an island left out only takes ground away
+ISLAND_CELLS = 12.0  # smaller islands of reached ground are left out: that takes ground away only
+SPECK_CELLS = 3.5  # holes of up to 3 cells are left out: they lie within one cell of reached
+# ground all over
 
 
 def trace(mask: NDArray[np.bool_]) -> MultiPolygon:
@@ -61,7 +62,7 @@ def _moved(shape: BaseGeometry, by: NDArray[np.float64]) -> BaseGeometry:
 def _polygon(points: NDArray[np.float64], offsets: NDArray[np.uint32]) -> shapely.Polygon | None:
     """Return one contour as a polygon, its specks left out; None when it is a speck itself."""
     rings = [points[a:b] for a, b in pairwise(offsets)]
-    if abs(_ring_area(rings[0])) < SPECK_CELLS:
+    if abs(_ring_area(rings[0])) < ISLAND_CELLS:
         return None
     holes = [ring for ring in rings[1:] if abs(_ring_area(ring)) >= SPECK_CELLS]
     return shapely.Polygon(rings[0], holes)

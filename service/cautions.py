@@ -77,7 +77,7 @@ def margins_below_default(
                 f"{value:.4g}{shown.unit} instead of {usual:.4g}{shown.unit}."
             )
     needed_m = turn_180_loss_m + TURN_RESERVE_M
-    if max(margins.arrival_height_m, margins.clearance_m) < needed_m:
+    if margins.arrival_m < needed_m:
         sentence = (
             "The arrival height is less than this aeroplane's 180 degree turn at the set bank "
             f"plus 200 ft ({needed_m / FT_M:.0f} ft)."

@@ -211,6 +211,9 @@ def _line(parts: Sequence[str | int], kind: str) -> str:
 def _fault(error: ModelError) -> str:
     """Return a domain error as a sentence, led by the option's name."""
     parts = error.field.split(".") if error.field else []
+    if isinstance(error, RecordError) and parts[:1] != ["aircraft"] and parts:
+        allowed = f" Allowed: {error.allowed}." if error.allowed else ""
+        return f"Aircraft record, {error.field}: {error.detail}{allowed}"
     name = parts[-1] if parts[:1] == ["margins"] else "".join(parts[:1])
     lead = f"{option(name)}: " if name else ""
     where = f" ({'.'.join(parts[1:])})" if name == "aircraft" and len(parts) > 1 else ""

@@ -117,14 +117,15 @@ function rose(ranges, far) {
  */
 export function showSites(box, reach, onAsk) {
   const within = reach.filter((site) => site.in_range);
-  const without = reach.filter((site) => !site.in_range);
+  const tight = reach.filter((site) => !site.in_range && site.surplus_ft >= 0 && site.surplus_ft !== null);
+  const without = reach.filter((site) => !site.in_range && !tight.includes(site));
   const near = (/** @type {any} */ one, /** @type {any} */ other) => one.distance_nm - other.distance_nm;
   within.sort((one, other) => (other.surplus_ft ?? 0) - (one.surplus_ft ?? 0));
   without.sort(near);
   const item = (/** @type {any} */ site) => {
     const button = el("button", { type: "button", class: "entry" },
       el("span", { class: "title" }, String(site.name)),
-      el("span", { class: "figure" }, site.in_range ? surplus(site.surplus_ft) : "out of range"),
+      el("span", { class: "figure" }, site.in_range || tight.includes(site) ? surplus(site.surplus_ft) : "out of range"),
       el("span", { class: "more" }, [`${nauticalMiles(site.distance_nm)} on ${bearing(site.bearing_deg)}`,
         site.note].filter(Boolean).join(". ")));
     button.addEventListener("click", () => onAsk(String(site.id)));
@@ -132,6 +133,8 @@ export function showSites(box, reach, onAsk) {
   };
   box.replaceChildren(
     el("h3", {}, `Within modelled range: ${within.length}`), el("ul", {}, ...within.map(item)),
+    ...(tight.length ? [el("h3", {}, `Reached, with a reason against: ${tight.length}`),
+      el("ul", {}, ...tight.map(item))] : []),
     el("h3", {}, `Not within it: ${without.length}`), el("ul", {}, ...without.map(item)));
 }
 

@@ -24,7 +24,8 @@ export function showSection(box, section, name, onClose) {
   const turned = last?.along_nm > section.distance_nm + 0.02;
   box.replaceChildren(
     el("h2", {}, name ?? place(section.to[1], section.to[0])),
-    el("p", { class: "verdict" }, within ? String(reason.text) : "Out of modelled range"),
+    el("p", { class: "verdict" }, within ? String(reason.text)
+      : reason.code === "no_room" ? "Within modelled range, but no room to lose height" : "Out of modelled range"),
     within ? "" : el("p", { class: "reason" }, String(reason.text)),
     bent ? drawing(section.path_profile, null, "Section along the path", true)
       : drawing(section.profile, within ? null : reason.ridge,
