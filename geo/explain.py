@@ -15,6 +15,7 @@ from geo import paths, rays
 from geo.answers import Explanation, GlidePath, ProfilePoint, Ridge, SiteReach
 from geo.case import FT_M, NM_M
 from geo.sites import Site
+from geo.terrain_layer import meets
 
 if TYPE_CHECKING:
     from geo.footprint import Footprint
@@ -59,8 +60,7 @@ def _out(
 def _nothing(answer: Footprint, lon: float, lat: float) -> Explanation:
     """Tell a void inside the terrain from a place off it."""
     for source in answer.store.sources:
-        west, south, east, north = source.bbox
-        if west <= lon <= east and south <= lat <= north:
+        if meets(source.bbox, np.array([lon]), np.array([lat])):
             text = "No terrain data here (a void): never shown as within range."
             return _out("void", text, None)
     return _out("off_terrain", "This place is off the terrain that is loaded.", None)

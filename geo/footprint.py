@@ -13,6 +13,7 @@ from functools import cached_property
 from math import cos, pi, sin
 
 import numpy as np
+import shapely
 from numpy.typing import NDArray
 from shapely.geometry import MultiPolygon
 
@@ -91,6 +92,7 @@ class Footprint:
     ground_m: float
     footprint: MultiPolygon
     straight: MultiPolygon
+    cells: MultiPolygon
     sources: tuple[TerrainSource, ...]
     limits: list[str]
     landing_sites: tuple[Site, ...] = ()
@@ -117,7 +119,7 @@ class Footprint:
 
     @cached_property
     def ranges(self) -> list[tuple[float, float]]:
-        """Farthest reached cell on 36 true bearings: (bearing [rad], distance [m])."""
+        """How far the outline reaches on 36 true bearings: (bearing [rad], distance [m])."""
         return _ranges(self)
 
     @cached_property
@@ -194,37 +196,46 @@ def solve(
         )
     glide = prepare(case, frame, ground_m)
     _check(cancel)
-    grid = grid_for(store, glide, frame, limits)
-    window = store.window(frame, grid.col0, grid.row0, grid.n_cols, grid.n_rows, grid.cell_m)
+    grid = grid_for(store, glide, frame, limits, cancel)
+    size = (grid.col0, grid.row0, grid.n_cols, grid.n_rows)
+    window = store.window(frame, *size, grid.cell_m, cancel)
     _check(cancel)
     labels = label(glide, grid, window.top_m, cancel, bend)
-    straight = to_lonlat(trace(labels.straight), frame, grid.col0, grid.row0, grid.cell_m)
-    outline = straight
+    place = (frame, grid.col0, grid.row0, grid.cell_m)
+    straight_cells = trace(labels.straight)
     _check(cancel)
-    if bend:
-        outline = to_lonlat(trace(labels.reach), frame, grid.col0, grid.row0, grid.cell_m)
+    cells = trace(labels.reach) if bend else straight_cells
+    straight = to_lonlat(straight_cells, *place)
+    outline = to_lonlat(cells, *place) if bend else straight
     _check(cancel)
     return Footprint(
         case, glide, grid, store, labels, ground_m,
-        outline, straight,
-        window.sources, _sentences(store, glide, grid, labels), tuple(sites),
+        outline, straight, cells,
+        window.sources, _sentences(store, glide, grid, labels, outline), tuple(sites),
     )  # fmt: skip
 
 
-def grid_for(store: TerrainStore, glide: Glide, frame: Frame, limits: SolveLimits) -> Grid:
+def grid_for(
+    store: TerrainStore, glide: Glide, frame: Frame, limits: SolveLimits,
+    cancel: NDArray[np.uint8] | None = None,
+) -> Grid:  # fmt: skip
     """Return the window that the glide can touch, down to the lowest ground sampled in it."""
     case = glide.case
     x_m, y_m = frame.to_xy_m(case.lon_deg, case.lat_deg)
     west, south, east, north = reach_box_m(glide, LOWEST_GROUND_M)
     xs, ys = np.meshgrid(np.linspace(west, east, 49) + x_m, np.linspace(south, north, 49) + y_m)
-    ground = store.ground_m(*frame.to_lonlat(xs.ravel(), ys.ravel()))
-    lowest_m = min(float(np.nanmin(ground, initial=np.inf)), case.alt_m) - LOWEST_SPARE_M
+    lowest_m = case.alt_m
+    for x, y in zip(np.array_split(xs, 12), np.array_split(ys, 12), strict=True):
+        _check(cancel)
+        ground = store.ground_m(*frame.to_lonlat(x.ravel(), y.ravel()))
+        lowest_m = min(lowest_m, float(np.nanmin(ground, initial=np.inf)))
+    lowest_m -= LOWEST_SPARE_M
     reach = reach_box_m(glide, lowest_m + case.margins.arrival_m)
     return choose_grid(frame, float(x_m), float(y_m), reach, limits, case.detail)
 
 
-def _check(cancel: NDArray[np.uint8]) -> None:
-    if cancel[0]:
+def _check(cancel: NDArray[np.uint8] | None) -> None:
+    if cancel is not None and cancel[0]:
         raise Cancelled
 
 
@@ -329,7 +340,7 @@ def _roots(
         return 1
     dx, dy = sin(glide.track_rad), cos(glide.track_rad)
     if not rays.heading_for(glide.air, par, z, dx, dy, root[k.HX : k.HY + 1]):
-        return 0
+        root[k.HX], root[k.HY] = dx, dy  # the nose points along the track, the wind carries it off
     root[k.COUNT], root[k.STEP], root[k.SPEEDS_UP] = 1, 0.0, 1.0
     end = np.empty(3)
     if not rays.fly_on(top, run, glide.entry, glide.air, par, root, glide.figures.reaction_s, end):
@@ -344,10 +355,12 @@ def _roots(
     return 3
 
 
-def _sentences(store: TerrainStore, glide: Glide, grid: Grid, labels: Labels) -> list[str]:
+def _sentences(
+    store: TerrainStore, glide: Glide, grid: Grid, labels: Labels, outline: MultiPolygon
+) -> list[str]:
     """Return what this answer leaves out, in sentences."""
     sentences = [*glide.notes, *store.notes, *_ridge_wind(glide, labels)]
-    if not labels.reach.any():
+    if outline.is_empty:
         sentences.append(
             "These margins leave nothing within modelled range here. That does not mean that no"
             " landing is possible."
@@ -378,20 +391,19 @@ def _ridge_wind(glide: Glide, labels: Labels) -> list[str]:
 
 
 def _ranges(answer: Footprint) -> list[tuple[float, float]]:
-    """Return the farthest reached cell on each of 36 true bearings."""
+    """Return how far the outline reaches on each of 36 true bearings."""
     grid, case = answer.grid, answer.case
     x_m, y_m = grid.frame.to_xy_m(case.lon_deg, case.lat_deg)
     x, y = float(x_m) / grid.cell_m - grid.col0, float(y_m) / grid.cell_m - grid.row0
-    steps = np.arange(0.0, np.hypot(grid.n_cols, grid.n_rows), 0.5)
+    bearings = 2 * pi * np.arange(N_RANGES) / N_RANGES
+    at, far = bearings + answer.glide.convergence_rad, np.hypot(grid.n_cols, grid.n_rows)
+    ends = np.column_stack((x + far * np.sin(at), y + far * np.cos(at)))
+    lines = [shapely.LineString([(x, y), end]) for end in ends]
     found = []
-    for i in range(N_RANGES):
-        bearing = 2 * pi * i / N_RANGES
-        at = bearing + answer.glide.convergence_rad
-        cols = np.floor(x + steps * sin(at)).astype(np.int64)
-        rows = np.floor(y + steps * cos(at)).astype(np.int64)
-        inside = (cols >= 0) & (rows >= 0) & (cols < grid.n_cols) & (rows < grid.n_rows)
-        hits = np.flatnonzero(answer.labels.reach[rows[inside], cols[inside]])
-        found.append((bearing, float(steps[inside][hits[-1]] * grid.cell_m) if hits.size else 0.0))
+    for bearing, shown in zip(bearings, shapely.intersection(lines, answer.cells), strict=True):
+        points = shapely.get_coordinates(shown)
+        away = np.hypot(points[:, 0] - x, points[:, 1] - y).max(initial=0.0)
+        found.append((float(bearing), float(away) * grid.cell_m))
     return found
 
 

@@ -64,6 +64,8 @@ from geo.rays import (
     replay,
 )
 
+SETTLED = 1.0  # share of the way on which a turn's speed is lost, flown before the next turn
+
 
 @njit(cache=True, nogil=True)
 def fan(
@@ -80,7 +82,6 @@ def fan(
     n, offset = int(anchor[COUNT]), int(anchor[OFFSET])
     arc = new_arc(air, par, anchor)
     arcs, state = np.empty((BLOCK_RAYS, N_ARC)), np.empty(N_STATE)
-    half = int(np.pi / anchor[STEP]) if anchor[TURNS] > 0.0 else n
     n_touched, k, open_arc = 0, 0, True
     while k < n and open_arc and not cancel[0]:
         m = 0
@@ -91,8 +92,7 @@ def fan(
             arcs[m] = arc
             m += 1
             arc_step(air, par, anchor, arc)
-        eager = thorough and k <= half
-        allowance = NO_LIMIT if eager else int(par[DETOUR_CELLS])
+        allowance = NO_LIMIT if thorough else int(par[DETOUR_CELLS])
         first, every = m // 2, 1
         if m and ray_start(arcs[first], entry, state):
             before = n_touched
@@ -100,7 +100,7 @@ def fan(
                 top, alt, ray, run, par, state, offset + k + first, offset, allowance,
                 touched, n_touched,
             )  # fmt: skip
-            if not eager:
+            if not thorough:
                 # no finer than one cell at twice the distance that the middle ray was of use
                 every = (
                     m if n_touched == before else int(0.5 / (anchor[STEP] * state[FLOWN] + 1e-9))
@@ -147,6 +147,8 @@ def _add_anchor(
     t = nearest_on_ray(state, r, c)
     if ray_id == 0 and t < par[REACTION_CELLS]:
         return False  # nothing is done before the reaction time is over
+    if t < SETTLED * (state[SZ] - state[CAP]) * par[MAX_RUN]:
+        return False  # the speed of the last turn is not yet lost
     z = min(glide_alt(run, par, state[SZ], state[TRACK], t), state[CAP])
     new = anchors[n_anchors]
     new[AX], new[AY], new[AZ] = state[SX] + t * state[DX], state[SY] + t * state[DY], z

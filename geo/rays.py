@@ -347,18 +347,23 @@ def fly_on(
 ) -> bool:
     """Fly straight on from an anchor for some seconds and write x, y, z of the end to `end` (3,).
 
-    False where the track cannot be held or the clearance is not kept on the way.
+    Where the track is not held the wind carries the aeroplane off with its nose where it points.
+    False where the clearance is not kept on the way.
     """
     state, arc = np.empty(N_STATE), new_arc(air, par, anchor)
-    if not ray_start(arc, entry, state):
-        return False
+    held = ray_start(arc, entry, state) and run_at(run, run.shape[0] - 1, state[TRACK]) > 0.0
+    sink_mps = arc[SHEAR_S] * GRAVITY_MPS2 / par[RATIO] + par[DOWNDRAFT_MPS]
     gx, gy = arc[SPEED] * arc[3] + arc[WX], arc[SPEED] * arc[4] + arc[WY]
     distance = sqrt(gx * gx + gy * gy) * seconds / par[CELL_M]
     pieces = int(distance * 4.0) + 1
     for i in range(pieces + 1):
         t = distance * i / pieces
-        end[0], end[1] = state[SX] + t * state[DX], state[SY] + t * state[DY]
-        end[2] = glide_alt(run, par, state[SZ], state[TRACK], t)
+        away = seconds * i / pieces / par[CELL_M]
+        end[0], end[1] = arc[0] + gx * away, arc[1] + gy * away
+        if held:
+            end[2] = glide_alt(run, par, state[SZ], state[TRACK], t)
+        else:
+            end[2] = arc[2] - sink_mps * seconds * i / pieces
         if not clear(top, par, end[0], end[1], end[2]):
             return False
     return True

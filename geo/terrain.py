@@ -24,10 +24,10 @@ from geo.raster_guard import raster_files
 from geo.terrain_layer import group, meets
 from geo.terrain_source import NOT_STATED, Bbox, TerrainSource, known_bbox, read_header
 from geo.terrain_tiles import CACHE_BYTES, TILE_CELLS, CellBlock, Tile, TileCache, TileKey
-from perf.errors import TerrainError
+from perf.errors import Cancelled, TerrainError
 
 Loaded = TypeVar("Loaded")
-BLOCK_TILES = 4  # tiles built at once along each side
+BLOCK_TILES = 2  # tiles built at once along each side: about 0.2 s, between looks at a cancel flag
 
 Values = NDArray[np.float64]
 
@@ -96,7 +96,7 @@ class TerrainStore:
             for obstacle in obstacles
         ]
         self._obstacles = ObstacleField(found, self.ground_m)
-        self.tiles = TileCache(self._build, cache_bytes)
+        self.tiles = TileCache(self._build_block, cache_bytes)
 
     @property
     def sources(self) -> tuple[TerrainSource, ...]:
@@ -135,8 +135,9 @@ class TerrainStore:
         return tuple(notes)
 
     def window(
-        self, frame: Frame, col0: int, row0: int, n_cols: int, n_rows: int, cell_m: float
-    ) -> TerrainWindow:
+        self, frame: Frame, col0: int, row0: int, n_cols: int, n_rows: int, cell_m: float,
+        cancel: NDArray[np.uint8] | None = None,
+    ) -> TerrainWindow:  # fmt: skip
         """Return the highest point of each cell of a rectangle.
 
         Parameters
@@ -149,11 +150,15 @@ class TerrainStore:
             Size [cells].
         cell_m
             Side of a cell [m].
+        cancel
+            One byte; set to 1 from another thread it stops the work.
 
         Raises
         ------
         TerrainError
             A terrain file that may be needed here is refused.
+        Cancelled
+            `cancel` was set.
         """
         x_m = (col0 + np.array([0.0, n_cols / 2, n_cols])) * cell_m
         y_m = (row0 + np.array([0.0, n_rows / 2, n_rows])) * cell_m
@@ -162,7 +167,14 @@ class TerrainStore:
         tile_rows = range(row0 // TILE_CELLS, (row0 + n_rows - 1) // TILE_CELLS + 1)
         tile_cols = range(col0 // TILE_CELLS, (col0 + n_cols - 1) // TILE_CELLS + 1)
         keys = [(frame, float(cell_m), row, col) for row in tile_rows for col in tile_cols]
-        tiles = self.tiles.get(keys)
+        blocks: dict[tuple[int, int], list[TileKey]] = {}
+        for key in keys:
+            blocks.setdefault((key[2] // BLOCK_TILES, key[3] // BLOCK_TILES), []).append(key)
+        tiles: dict[TileKey, Tile] = {}
+        for block in blocks.values():
+            if cancel is not None and cancel[0]:
+                raise Cancelled
+            tiles.update(self.tiles.get(block))
         top_m = np.empty((n_rows, n_cols), dtype=np.float32)
         used: set[int] = set()
         for key, tile in tiles.items():
@@ -249,16 +261,6 @@ class TerrainStore:
         for error, bbox in self._refused:
             if bbox is None or (lon_deg.size and meets(bbox, lon_deg, lat_deg)):
                 raise error
-
-    def _build(self, keys: list[TileKey]) -> dict[TileKey, Tile]:
-        """Return tiles, built in blocks."""
-        built: dict[TileKey, Tile] = {}
-        blocks: dict[tuple[int, int], list[TileKey]] = {}
-        for key in keys:
-            blocks.setdefault((key[2] // BLOCK_TILES, key[3] // BLOCK_TILES), []).append(key)
-        for block in blocks.values():
-            built.update(self._build_block(block))
-        return built
 
     def _build_block(self, keys: list[TileKey]) -> dict[TileKey, Tile]:
         """Return tiles, built as the rectangle that holds them."""
