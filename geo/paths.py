@@ -14,9 +14,9 @@ from geo import rays
 from geo.answers import GlidePath, PathPoint
 
 if TYPE_CHECKING:
-    from geo.footprint import Labels
     from geo.glide import Glide
     from geo.grid import Grid
+    from geo.label import Labels
 
 Array = NDArray[np.float64]
 

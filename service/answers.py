@@ -99,6 +99,7 @@ class FootprintAnswer(Answer):
     cell_m: FiniteFloat
     glide: GlideNumbers
     ranges: list[Range]
+    straight_ranges: list[Range]
     sites: list[SiteInReach]
     inputs: FootprintRequest
     data: list[Source]

@@ -234,6 +234,17 @@ def common_json(
     }
 
 
+def ranges_json(ranges: list[tuple[float, float]]) -> list[dict[str, float]]:
+    """Return distances by bearing in aviation units."""
+    return [
+        {
+            "bearing_deg": round(degrees(bearing_rad) % 360.0, 1),
+            "distance_nm": round(distance_m / NM_M, 3),
+        }
+        for bearing_rad, distance_m in ranges
+    ]
+
+
 def footprint_json(
     request: FootprintRequest, record: AircraftRecord, footprint: Footprint
 ) -> dict[str, Any]:
@@ -259,13 +270,8 @@ def footprint_json(
         "detail": request.detail,
         "cell_m": round(float(footprint.cell_m), 3),
         "glide": glide_json(footprint),
-        "ranges": [
-            {
-                "bearing_deg": round(degrees(bearing_rad) % 360.0, 1),
-                "distance_nm": round(distance_m / NM_M, 3),
-            }
-            for bearing_rad, distance_m in footprint.ranges
-        ],
+        "ranges": ranges_json(footprint.ranges),
+        "straight_ranges": ranges_json(footprint.straight_ranges),
         "sites": [site_json(reach) for reach in footprint.sites],
         **common_json(request, record, footprint),
     }

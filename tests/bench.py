@@ -27,9 +27,10 @@ from skimage.graph import MCP_Geometric
 from geo import footprint as fp
 from geo import layout as k
 from geo.case import FT_M, KT_MPS, GlideCase
-from geo.footprint import Footprint, label, ring_ranges, solve
+from geo.footprint import Footprint, solve
 from geo.frame import frame_for
 from geo.grid import Grid
+from geo.label import label, ring_ranges
 from geo.terrain import TerrainStore
 from geo.wind import WindProfile
 from perf.record import load_records

@@ -125,6 +125,7 @@ class StandIn:
         self.footprint_km2, self.straight_km2 = 79.5, 7.1
         self.figures = Figures()
         self.ranges = [(np.radians(10.0 * i), 3.0 * NM_M) for i in range(36)]
+        self.straight_ranges = [(bearing, 0.9 * away) for bearing, away in self.ranges]
         self.sources = store.sources
         self.limits = ["No wind given: calm air is assumed."]
         self.sites = [SiteReach("x", "Field", True, 128.0, 1.0, 2000.0, None)]
