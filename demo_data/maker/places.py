@@ -116,7 +116,7 @@ WEATHER = {
 }  # fmt: skip
 
 START = {
-    "east": 28.9, "north": 37.9, "altitude_ft": 5900, "track_deg": 275, "aircraft": "vessim-two",
+    "east": 28.9, "north": 37.9, "altitude_ft": 5850, "track_deg": 275, "aircraft": "vessim-two",
     "wind": "light-easterly",
     "note": "Flying down Ridge Valley towards the sea. Harvane Ridge hides Tarvane Aerodrome; "
     "ground on its far side is reached only round its western end.",
