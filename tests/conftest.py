@@ -93,7 +93,7 @@ def browser_path() -> str:
     pytest.skip(words)
 
 
-@pytest.fixture(scope="session")
+@pytest.fixture(scope="module")  # while it is open, its event loop keeps others from running
 def browser() -> Iterator[Any]:
     """Yield a headless chromium."""
     path = browser_path()
