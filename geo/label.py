@@ -195,10 +195,14 @@ def ring_ranges(glide: Glide, grid: Grid, top: NDArray[np.float32]) -> list[tupl
         Highest point of each cell [m], +inf where blocked, shape ``(n_rows, n_cols)``.
     """
     need_m = glide.case.margins.arrival_m
+    blocks = ring.block_maxima(top)
     par = _parameters(glide, grid, min(float(top.min()), glide.case.alt_m) + need_m)
     anchors, run = np.zeros((4, k.N_ANCHOR)), glide.run / grid.cell_m
-    n_roots = _roots(glide, grid, top, run, par, anchors, int(_rim_cells(glide, par)))
-    blocks = ring.block_maxima(top)
+    # the rim is a disc that the wind has carried off: its radius is the mean of all tracks' reach
+    held = glide.run[glide.run > 0.0]
+    share = float(held.mean() / held.max()) if held.size else 1.0
+    n_rays = int(_rim_cells(glide, par) * share)
+    n_roots = _roots(glide, grid, top, run, par, anchors, n_rays)
     longest = np.zeros(N_RANGES)
     for root in range(n_roots):
         # a little more than half a turn each way round: together they look all round
