@@ -101,7 +101,7 @@ async def _lifespan(app: FastAPI) -> AsyncIterator[None]:
 
 def warm_up(world: World, start: dict[str, Any]) -> None:
     """Compile the solver and solve the start case, so that the first request is quick."""
-    logger.info("Compiling the solver. The first start on a machine takes a minute or two.")
+    logger.info("Preparing the solver; the first start compiles it, which takes a minute or two.")
     for detail in ("coarse", "fine"):
         request = FootprintRequest.model_validate({**start, "track_deg": 90, "detail": detail})
         try:
