@@ -338,7 +338,8 @@ def load_sites(folder: Path) -> tuple[Site, ...]:
         A file or feature is faulty, or an id comes twice; names the file and the feature's index.
     """
     sites: dict[str, Site] = {}
-    for path in sorted(Path(folder).glob("sites/*.geojson")):
+    paths = sorted(Path(folder).glob("sites/*.geojson"))
+    for path in (path for path in paths if path.is_file()):  # a pipe would be waited for
         for index, feature in enumerate(_features(path)):
             where = f"sites/{path.name}#features[{index}]"
             try:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import copy
 import json
+import os
 from pathlib import Path
 from typing import Any
 
@@ -254,3 +255,9 @@ def test_brackets_in_text_do_not_count_as_nesting(tmp_path: Path) -> None:
     name = '\\" ' + "[" * (MAX_DEPTH + 1)
     (site,) = load_sites(write(tmp_path, changed(BARE, name=name)))
     assert site.name == name
+
+
+def test_a_pipe_among_the_files_is_passed_over(tmp_path: Path) -> None:
+    (tmp_path / "sites").mkdir()
+    os.mkfifo(tmp_path / "sites" / "pipe.geojson")
+    assert load_sites(tmp_path) == ()
