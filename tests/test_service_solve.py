@@ -181,7 +181,7 @@ def test_the_warm_up_solves_the_start_case_and_says_so(
     world = load_world(settings)
     with caplog.at_level("INFO", logger="engineout"):
         warm_up(world, world.start())
-    assert "Compiling" in caplog.text
+    assert "Preparing the solver" in caplog.text
     assert "cannot be solved" not in caplog.text
     caplog.clear()
     warm_up(world, {**world.start(), "position": [0, 0]})
